@@ -1,0 +1,95 @@
+"""The pages of `help` and `recall`, made from the vocabulary and from what a session holds."""
+
+from __future__ import annotations
+
+from spanwright_grammar.spelling import nearest
+from spanwright_grammar.vocabulary import VOCABULARY, Entry, by_kind, lookup_all
+
+from spanwright.context import Context, Function
+from spanwright.rendering.text import text
+
+_HEADS = {
+    "sentence": "Sentences", "family": "Families", "operator": "Operators",
+    "function": "Functions", "set": "Index sets", "setting": "Settings", "word": "Words and signs",
+    "parameter": "Parameters",
+}
+
+RECALLED_WIDTH = 100
+"""A definition or result is cut to this many characters in the list of all."""
+
+
+def page(topic: str | None) -> str | None:
+    """A help page; None when there is none under this word."""
+    if topic is None:
+        return _overview()
+    word = topic.strip()
+    entries = lookup_all(word)
+    if entries:
+        return "\n\n".join(_entry(e) for e in entries)
+    for kind, head in _HEADS.items():
+        if word.lower() in (kind, f"{kind}s", head.lower(), "families" if kind == "family" else ""):
+            return _listing(kind, head)
+    return None
+
+
+def nearest_topic(word: str) -> str | None:
+    """The nearest word that help knows."""
+    return nearest(word, [*(e.name for e in VOCABULARY), *(h.lower() for h in _HEADS.values())])
+
+
+def _overview() -> str:
+    lines = [
+        "Write products of generators, basis elements and operators as on paper: x_2 E_(1,0,2).",
+        "Fix the number of variables first: fix n = 3. Each result gets a tag, (7); later eq_7.",
+        "",
+    ]
+    for kind, head in _HEADS.items():
+        names = dict.fromkeys(e.name for e in by_kind(kind))
+        lines.append(f"{head}: {' '.join(names)}")
+    lines += ["", "help and a word explains it: help E, help claim, help settings."]
+    return "\n".join(lines)
+
+
+def _listing(kind: str, head: str) -> str:
+    entries = by_kind(kind)
+    width = max(len(e.signature) for e in entries if len(e.signature) <= 30)
+    rows = []
+    for e in entries:
+        if len(e.signature) <= width:
+            rows.append(f"  {e.signature.ljust(width)}  {e.meaning}")
+        else:
+            rows += [f"  {e.signature}", f"  {' ' * width}  {e.meaning}"]
+    return "\n".join([head, *rows])
+
+
+def _entry(entry: Entry) -> str:
+    lines = [f"{entry.signature}: {entry.meaning}"]
+    if entry.inputs:
+        lines.append(f"  takes: {entry.inputs}")
+    if entry.aliases:
+        lines.append(f"  also written: {' '.join(entry.aliases)}")
+    example = entry.example.replace("\n", "\n           ")
+    lines += [f"  example: {example}", f"  source: {entry.source}"]
+    return "\n".join(lines)
+
+
+def _short(shown: str) -> str:
+    first = shown.split("\n")[0]
+    if len(first) > RECALLED_WIDTH or first != shown:
+        return first[: RECALLED_WIDTH - 2].rstrip() + " …"
+    return first
+
+
+def everything(context: Context) -> str:
+    """All definitions, parameters, settings and tagged results, a line each."""
+    settings = context.settings
+    ring = f"n = {settings.n}" if settings.n is not None else "n is not fixed"
+    lines = [f"ring: {ring}; {', '.join(('q', 't', *context.parameters))} are parameters"]
+    for name, value in context.names.items():
+        if isinstance(value, Function):
+            lines.append(_short(value.text.strip()))
+        else:
+            lines.append(_short(f"{name} = {text(value, settings.show)}"))
+    for tag, value in context.results.items():
+        lines.append(_short(f"eq_{tag} = {text(value, settings.show)}"))
+    return "\n".join(lines)

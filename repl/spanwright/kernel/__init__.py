@@ -1,0 +1,1 @@
+"""Exact algebra: scalars, polynomials, expansions, families, operators; knows nothing of text."""

@@ -1,0 +1,54 @@
+"""The cooperative stop: a budget in force, asked by long loops between kernel calls.
+
+The clock is handed in by whoever sets the budget: the kernel itself has none.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from contextvars import ContextVar
+from dataclasses import dataclass
+
+from spanwright.kernel.errors import OverBudget
+
+
+@dataclass(frozen=True, slots=True)
+class Budget:
+    """Limits for one sentence: `is_spent` says why work must stop, `max_terms` bounds a result."""
+
+    is_spent: Callable[[], str | None] = lambda: None
+    max_terms: int = 2_000_000
+
+    def check(self) -> None:
+        """Raise OverBudget when the time is over or somebody cancelled."""
+        reason = self.is_spent()
+        if reason is not None:
+            raise OverBudget(reason)
+
+    def check_terms(self, n_terms: int, what: str) -> None:
+        """Raise OverBudget when `n_terms` is more than the budget allows."""
+        if n_terms > self.max_terms:
+            raise OverBudget(
+                f"{what} would have about {n_terms:,} terms, the limit is {self.max_terms:,}",
+                code="too-many-terms",
+            )
+        self.check()
+
+
+_in_force: ContextVar[Budget] = ContextVar("spanwright_budget", default=Budget())
+
+
+def current() -> Budget:
+    """The budget in force."""
+    return _in_force.get()
+
+
+@contextmanager
+def using(budget: Budget) -> Iterator[None]:
+    """Put `budget` in force for a block."""
+    token = _in_force.set(budget)
+    try:
+        yield
+    finally:
+        _in_force.reset(token)

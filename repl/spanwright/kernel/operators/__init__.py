@@ -1,0 +1,1 @@
+"""One file an algebra: generators, relations, action, straightening to canonical form."""

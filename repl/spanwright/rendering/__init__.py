@@ -1,0 +1,1 @@
+"""Values as text (parses back), TeX, JSON, HTML; one file each."""

@@ -1,0 +1,174 @@
+"""Values in the language itself: what is printed here parses back to the same value."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import Any
+
+from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.expansions import Expansion
+from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.rendering.scalars import TEXT, Style, scalar_text
+from spanwright.values import (
+    Definition,
+    FamilyMark,
+    IndexSet,
+    Infinity,
+    ListValue,
+    Setting,
+    Table,
+    Text,
+    Truth,
+    as_scalar,
+    is_number,
+    is_operator,
+)
+
+
+def text(value: Any, show: str = "short") -> str:
+    """Any value on one line (tables and prose: several)."""
+    if is_number(value):
+        return number_text(value)
+    if isinstance(value, Scalar):
+        return scalar_text(value, show=show)
+    if isinstance(value, LaurentPolynomial | Expansion):
+        return sum_text(term_pieces(value, TEXT, show))
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, Truth):
+        return truth_text(value, show)
+    if isinstance(value, tuple):
+        return index_text(value)
+    if isinstance(value, ListValue):
+        return f"list({', '.join(text(v, show) for v in value.items)})"
+    if isinstance(value, IndexSet):
+        return value.description
+    if isinstance(value, FamilyMark):
+        return value.family.name
+    if isinstance(value, Infinity):
+        return "infinity"
+    if isinstance(value, str):
+        return quoted(value)
+    if isinstance(value, Text):
+        return value.content
+    if isinstance(value, Definition | Setting):
+        return value.text
+    if isinstance(value, Table):
+        return table_text(value, show)
+    if is_operator(value):
+        from spanwright.rendering.operators import operator_text
+
+        return operator_text(value, show)
+    raise TypeError(f"no text for {type(value).__name__}")
+
+
+def number_text(value: int | Fraction) -> str:
+    """An integer or fraction of any size."""
+    if isinstance(value, int):
+        return TEXT.integer(value)
+    return f"{TEXT.integer(value.numerator)}/{TEXT.integer(value.denominator)}"
+
+
+def index_text(index: tuple[Any, ...]) -> str:
+    """(2,0,1); a list of one part keeps its brackets."""
+    return f"({','.join(text(part) for part in index)})"
+
+
+def quoted(content: str) -> str:
+    """A text as a string of the language."""
+    escaped = content.replace("\\", "\\\\").replace('"', '\\"').replace("\n", "\\n")
+    return f'"{escaped}"'
+
+
+def truth_text(value: Truth, show: str = "short") -> str:
+    """`holds`, or `fails` with the difference of the two sides."""
+    if value.holds:
+        return "holds" if value.certainty == "exact" else f"holds with high probability ({value.evidence})"
+    if value.difference is None:
+        return f"fails ({value.evidence})" if value.evidence else "fails"
+    lines = ["fails", f"left - right = {text(value.difference, show)}"]
+    if value.evidence:
+        lines.append(value.evidence)
+    return "\n".join(lines)
+
+
+Piece = tuple[bool, str, str]
+"""Whether negative, the coefficient (empty for 1), the element (empty for a scalar term)."""
+
+
+def term_pieces(
+    value: LaurentPolynomial | Expansion, style: Style, show: str
+) -> list[Piece]:
+    """The terms of a polynomial or expansion in the order in which they are shown."""
+    pieces: list[Piece] = []
+    if isinstance(value, LaurentPolynomial):
+        for exponents, c in value.items():
+            pieces.append(term_piece(c, monomial_text(exponents, style), style, show))
+    else:
+        for index, c in value.items():
+            shown = value.family.show_index(index, value.n)
+            pieces.append(term_piece(c, element_text(value.family.name, shown), style, show))
+    return pieces
+
+
+def term_piece(c: Scalar, element: str, style: Style, show: str) -> Piece:
+    """A coefficient and an element."""
+    coefficient = scalar_text(c, style, show, as_factor=bool(element))
+    negative = coefficient.startswith("-")
+    if negative:
+        coefficient = coefficient[1:]
+    if coefficient == "1" and element:
+        coefficient = ""
+    return negative, coefficient, element
+
+
+def monomial_text(exponents: tuple[int, ...], style: Style = TEXT) -> str:
+    """x_1^2 x_3; nothing for 1."""
+    return style.times.join(
+        style.raised(f"x_{j}", e) for j, e in enumerate(exponents, 1) if e)
+
+
+def element_text(name: str, index: tuple[int, ...]) -> str:
+    """E_(2,0,1); a single part in brackets, so that digits are never read one by one."""
+    return f"{name}_({','.join(map(str, index))})"
+
+
+def sum_text(pieces: list[Piece], times: str = " ") -> str:
+    """The terms joined with their signs; 0 for none."""
+    if not pieces:
+        return "0"
+    rows: list[str] = []
+    for place, (negative, coefficient, element) in enumerate(pieces):
+        body = times.join(part for part in (coefficient, element) if part)
+        if place == 0:
+            rows.append(f"-{body}" if negative else body)
+        else:
+            rows.append(f"{'-' if negative else '+'} {body}")
+    return " ".join(rows)
+
+
+def cell_text(value: Any, show: str = "short") -> str:
+    """A value inside a table."""
+    return value if isinstance(value, str) else text(value, show)
+
+
+def table_text(value: Table, show: str = "short") -> str:
+    """Columns aligned left, heads over a rule."""
+    rows = [[cell_text(v, show) for v in row] for row in value.rows]
+    widths = [
+        max([len(head), *(len(row[k]) for row in rows)]) for k, head in enumerate(value.columns)]
+    lines = [value.caption] if value.caption else []
+    if value.columns:
+        head = "  ".join(h.ljust(w) for h, w in zip(value.columns, widths, strict=True))
+        lines += [head.rstrip(), "  ".join("-" * w for w in widths)]
+    for row in rows:
+        lines.append("  ".join(c.ljust(w) for c, w in zip(row, widths, strict=True)).rstrip())
+    lines += value.notes
+    return "\n".join(lines)
+
+
+def element_value(value: Any) -> Scalar | LaurentPolynomial | Expansion | None:
+    """A number, scalar, polynomial or expansion as a kernel value, else None."""
+    if isinstance(value, LaurentPolynomial | Expansion):
+        return value
+    return as_scalar(value)

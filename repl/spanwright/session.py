@@ -1,0 +1,275 @@
+"""The only mutable state: a session runs sentences one after another and keeps what they leave.
+
+A failing sentence leaves everything as it was. Outcomes carry live values; `Outcome.reply()` is
+the same as plain data, which is all that shell, server and command line ever see.
+"""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections.abc import Iterator
+from dataclasses import dataclass, field, replace
+from pathlib import Path
+from typing import Any
+
+from spanwright_grammar import syntax
+from spanwright_grammar.diagnostics import Diagnostic, format_diagnostic
+from spanwright_grammar.parsing import Chunk, parse
+from spanwright_grammar.source import Source, Span
+
+from spanwright.context import Context, Failure, failure
+from spanwright.files import FileRefused, Folder
+from spanwright.kernel import budget
+from spanwright.rendering.json import data
+from spanwright.rendering.layout import term_lines
+from spanwright.rendering.text import text
+from spanwright.sentences import Step, Surface, carry_out
+from spanwright.settings import Settings
+from spanwright.values import Text
+from spanwright.views import View
+
+# nested brackets, functions and sums need a few Python frames each; the parser bounds them
+RECURSION_LIMIT = 20_000
+
+
+@dataclass(frozen=True, slots=True)
+class Reply:
+    """One sentence's outcome as plain data, ready to be shown or sent to another process."""
+
+    sentence: int
+    line: int
+    column: int
+    source: str
+    status: str
+    kind: str
+    tag: int | None
+    n: int | None
+    text: str
+    terms: tuple[str, ...]
+    messages: tuple[str, ...]
+    record: dict[str, Any]
+    seconds: float
+    is_quit: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """What became of one sentence.
+
+    `status` is `ok`, `failed` (a claim that does not hold) or `error` (nothing was done).
+    """
+
+    sentence: int
+    source: Source
+    span: Span
+    status: str
+    raw: Any
+    tag: int | None
+    settings: Settings
+    diagnostics: tuple[Diagnostic, ...]
+    seconds: float
+
+    @property
+    def value(self) -> View | None:
+        """The value, with its terms, equality and renderings; None for an error."""
+        return None if self.status == "error" else View(self.raw, self.settings.show)
+
+    @property
+    def line(self) -> int:
+        """The line of the sentence, from 1."""
+        return self.source.position(self.span.start)[0]
+
+    @property
+    def text(self) -> str:
+        """The value, or the messages, as text."""
+        if self.status == "error":
+            return "\n".join(self.messages())
+        return text(self.raw, self.settings.show)
+
+    def messages(self) -> tuple[str, ...]:
+        """The diagnostics with their line and caret."""
+        return tuple(format_diagnostic(self.source, d) for d in self.diagnostics)
+
+    def __str__(self) -> str:
+        return self.text
+
+    def _repr_latex_(self) -> str | None:
+        value = self.value
+        return None if value is None else value._repr_latex_()
+
+    def record(self) -> dict[str, Any]:
+        """The outcome as JSON Lines hold it."""
+        line, column = self.source.position(self.span.start)
+        head: dict[str, Any] = {
+            "sentence": self.sentence, "line": line,
+            "source": self.source.slice(self.span).strip(), "status": self.status}
+        if self.status == "error":
+            first = self.diagnostics[0]
+            line, column = self.source.position(first.span.start)
+            head.update(
+                kind="error", code=first.code, message=first.message, line=line, column=column,
+                hint=first.hints[0] if first.hints else None)
+        else:
+            content = data(self.raw)
+            head["kind"] = content.pop("kind")
+            if self.tag is not None:
+                head["tag"] = self.tag
+            head["n"] = content.pop("n", self.settings.n)
+            head.update(content)
+        if self.settings.hecke != "plain":
+            head["hecke"] = self.settings.hecke
+        head["seconds"] = round(self.seconds, 4)
+        return head
+
+    def reply(self) -> Reply:
+        """The outcome as plain data."""
+        line, column = self.source.position(self.span.start)
+        record = self.record()
+        is_error = self.status == "error"
+        show = self.settings.show
+        return Reply(
+            self.sentence, line, column, self.source.slice(self.span).strip(), self.status,
+            record["kind"], self.tag, self.settings.n, "" if is_error else self.text,
+            () if is_error else term_lines(self.raw, show), self.messages(), record,
+            self.seconds, isinstance(self.raw, Text) and self.raw.kind == "quit")
+
+
+@dataclass
+class Session:
+    """A ring, its settings, names and results, and how they change.
+
+    >>> Session(n=3).run("x_1 E_201").text
+    'E_(3,0,1) + (1 - t)/(1 - q t^2) E_(2,1,1)'
+    """
+
+    n: int | None = None
+    folder: Folder = field(default_factory=lambda: Folder(Path.cwd()))
+    context: Context = field(default_factory=Context)
+    n_sentences: int = 0
+    last_tag: int = 0
+    has_quit: bool = False
+    _used: set[Path] = field(default_factory=set)
+    _using: list[Path] = field(default_factory=list)
+
+    def __post_init__(self) -> None:
+        sys.setrecursionlimit(max(sys.getrecursionlimit(), RECURSION_LIMIT))
+        if self.n is not None:
+            self.context = replace(self.context, settings=Settings(n=self.n))
+
+    def run(self, text: str, name: str = "<input>") -> Outcome:
+        """Run all sentences of a text, up to the first that is wrong; the last outcome.
+
+        Raises ValueError when the text holds no sentence.
+        """
+        last: Outcome | None = None
+        for outcome in self.run_all(Source(text, name)):
+            last = outcome
+            if outcome.status == "error":
+                break
+        if last is None:
+            raise ValueError("the text holds no sentence")
+        return last
+
+    def run_all(self, source: Source) -> Iterator[Outcome]:
+        """Run a text's sentences one after another, wrong ones too, until `quit`."""
+        for chunk in parse(source).chunks:
+            yield self._run_chunk(source, chunk)
+            if self.has_quit:
+                return
+
+    def names(self) -> tuple[str, ...]:
+        """The session's own names, for completion."""
+        return (*self.context.names, *self.context.parameters)
+
+    def _run_chunk(self, source: Source, chunk: Chunk) -> Outcome:
+        self.n_sentences += 1
+        started = time.perf_counter()
+        if chunk.sentence is None:
+            return self._outcome(source, chunk.span, "error", None, None, chunk.diagnostics, 0.0)
+        try:
+            step = self._carry_out(chunk.sentence, source)
+        except Failure as found:
+            seconds = time.perf_counter() - started
+            return self._outcome(
+                source, chunk.span, "error", None, None, (found.diagnostic,), seconds)
+        except (RecursionError, MemoryError):
+            wrong = failure("too-large", chunk.span,
+                            "this sentence needs more memory than there is").diagnostic
+            return self._outcome(source, chunk.span, "error", None, None, (wrong,), 0.0)
+        tag = self._keep(step)
+        seconds = time.perf_counter() - started
+        status = "failed" if step.has_failed else "ok"
+        return self._outcome(source, chunk.span, status, step.value, tag, (), seconds)
+
+    def _carry_out(self, sentence: syntax.Sentence, source: Source) -> Step:
+        limits = self.context.settings
+        deadline = None if limits.seconds is None else time.monotonic() + limits.seconds
+
+        def reason() -> str | None:
+            if deadline is not None and time.monotonic() > deadline:
+                return f"stopped after {limits.seconds} seconds: fix seconds = … to allow more"
+            return None
+
+        surface = Surface(source, self._use, self._read, self._write)
+        with budget.using(budget.Budget(reason, limits.terms)):
+            return carry_out(sentence, self.context, surface)
+
+    def _keep(self, step: Step) -> int | None:
+        self.context = step.context
+        if isinstance(step.value, Text) and step.value.kind == "quit":
+            self.has_quit = True
+        if not step.is_tagged:
+            return None
+        self.last_tag += 1
+        self.context = replace(
+            self.context, results={**self.context.results, self.last_tag: step.value})
+        return self.last_tag
+
+    def _outcome(
+        self, source: Source, span: Span, status: str, value: Any, tag: int | None,
+        diagnostics: tuple[Diagnostic, ...], seconds: float,
+    ) -> Outcome:
+        return Outcome(
+            self.n_sentences, source, span, status, value, tag, self.context.settings,
+            diagnostics, seconds)
+
+    # files
+
+    def _use(self, path: str, node: syntax.Node) -> Context:
+        """Run another script in this session, once; all of it or, after an error, nothing."""
+        try:
+            place, content = self.folder.read(path)
+        except FileRefused as error:
+            raise failure(error.code, node.place, str(error)) from error
+        if place in self._using:
+            raise failure("circular-use", node.place, f"{path} uses itself")
+        if place in self._used:
+            return self.context
+        kept = (self.context, self.last_tag, self.n_sentences, set(self._used), self.folder)
+        self._using.append(place)
+        self.folder = replace(self.folder, root=self.folder.root)
+        try:
+            for outcome in self.run_all(Source(content, path)):
+                if outcome.status != "ok":
+                    what = (outcome.diagnostics[0].message if outcome.diagnostics
+                            else "a claim does not hold")
+                    self.context, self.last_tag, self.n_sentences, self._used, self.folder = kept
+                    raise failure("unreadable-file", node.place,
+                                  f"{path}, line {outcome.line}: {what}")
+        finally:
+            self._using.pop()
+            self.has_quit = False
+        self._used.add(place)
+        self.n_sentences = kept[2]
+        return self.context
+
+    def _read(self, path: str, node: syntax.Node) -> Any:
+        raise failure("not-available-yet", node.place,
+                      "`read` is part of the language, but nothing here reads values yet")
+
+    def _write(self, path: str, content: str, node: syntax.Node) -> str:
+        try:
+            return str(self.folder.write(path, content).name)
+        except FileRefused as error:
+            raise failure(error.code, node.place, str(error)) from error

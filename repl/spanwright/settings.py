@@ -1,0 +1,48 @@
+"""The settings of a session: one frozen record, and what each may be given."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+from spanwright.kernel.coefficients import Scalar
+
+
+@dataclass(frozen=True, slots=True)
+class Settings:
+    """What `fix` sets; None where nothing is fixed."""
+
+    n: int | None = None
+    q: Scalar | None = None
+    t: Scalar | None = None
+    basis: str | None = None
+    convention: str = "standard"
+    hecke: str = "plain"
+    show: str = "short"
+    seconds: int | None = None
+    terms: int = 2_000_000
+    memory: int | None = None
+    jobs: int = 1
+    certainty: str = "exact"
+    seed: int = 1
+
+    def changed(self, **changes: Any) -> Settings:
+        """With some settings changed."""
+        return replace(self, **changes)
+
+    def images(self) -> dict[str, Scalar]:
+        """The values that parameters are fixed at."""
+        return {name: value for name, value in (("q", self.q), ("t", self.t))
+                if value is not None}
+
+
+WORDS: dict[str, tuple[str, ...]] = {
+    "convention": ("standard",),
+    "hecke": ("plain", "balanced"),
+    "show": ("short", "factored", "expanded"),
+    "certainty": ("exact", "random"),
+}
+"""Settings whose value is one of some words."""
+
+LARGEST_N = 60
+"""More variables than this are taken for a slip of the finger."""
