@@ -1,7 +1,12 @@
-"""Sets hypothesis up for the whole suite: the same cases every run, no clock in the verdict."""
+"""Sets the whole suite up: the same cases every run, no clock in the verdict, its own folder."""
 
 from __future__ import annotations
 
+import os
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
 from hypothesis import HealthCheck, settings
 
 from effort import effort
@@ -18,3 +23,12 @@ settings.register_profile(
     suppress_health_check=[HealthCheck.too_slow],
 )
 settings.load_profile("spanwright")
+
+
+@pytest.fixture(scope="session", autouse=True)
+def away_from_the_project(tmp_path_factory: pytest.TempPathFactory) -> Iterator[None]:
+    """Sessions write in the current folder, and random sentences may: never in the project's."""
+    before = Path.cwd()
+    os.chdir(tmp_path_factory.mktemp("current"))
+    yield
+    os.chdir(before)

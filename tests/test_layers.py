@@ -34,16 +34,42 @@ _GRAMMAR = (
     *_LANGUAGE,
     *(
         f"spanwright_grammar.{name}"
-        for name in ("completion", "formatting", "highlighting", "hover", "reference")
+        for name in (
+            "completion",
+            "document",
+            "formatting",
+            "highlighting",
+            "hover",
+            "navigation",
+            "outline",
+            "reference",
+        )
     ),
 )
 # What those above the language see of it: the package's own names too.
 _PUBLIC_GRAMMAR = (*_GRAMMAR, "spanwright_grammar")
-_ALGEBRA = ("spanwright.kernel", "spanwright.values")
-_EVALUATION = (*_ALGEBRA, "spanwright.builtins", "spanwright.rendering", "spanwright.evaluator")
-_SESSION = (*_EVALUATION, "spanwright.session")
+_VALUES = ("spanwright.kernel", "spanwright.values")
+_SHOWN = (*_VALUES, "spanwright.rendering")
+_GROUND = (*_SHOWN, "spanwright.settings", "spanwright.context")
+_COMPUTED = (*_GROUND, "spanwright.algebra", "spanwright.evaluator")
+_ANSWERS = (
+    *_COMPUTED,
+    *(f"spanwright.{name}" for name in ("claims", "derivations", "helping", "limits")),
+)
+_AROUND = (
+    *_ANSWERS,
+    *(f"spanwright.{name}" for name in ("sentences", "files", "replies", "views")),
+)
+_MANY = tuple(f"spanwright.{name}" for name in (
+    "cases", "finished", "gateway", "guessing", "means", "pool", "sweep", "tables", "tally",
+    "transport"))
+_SESSION = (*_AROUND, *_MANY, "spanwright.drawing", "spanwright.session")
 _RECORDS = ("spanwright", *_LANGUAGE, "spanwright_grammar", *_SESSION)
-_FRONT = ("spanwright", "spanwright.services", "spanwright.session", "spanwright.rendering")
+_FRONT = (
+    "spanwright",
+    *(f"spanwright.{name}" for name in ("conversation", "replies", "services")),
+    "spanwright.rendering",
+)
 
 # Each unit is a module, or a package with all below it; it may import itself and what its row
 # names. The two top packages stand for their __init__ alone.
@@ -59,34 +85,162 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
     "spanwright_grammar.parsing": (*_TREE, *_WORDS, "spanwright_grammar.lexing"),
     "spanwright_grammar.bindings": _TEXT,
     "spanwright_grammar.checks": (*_TEXT, "spanwright_grammar.bindings"),
+    "spanwright_grammar.document": _LANGUAGE,
+    "spanwright_grammar.outline": (*_LANGUAGE, "spanwright_grammar.document"),
+    "spanwright_grammar.navigation": (
+        *_LANGUAGE,
+        "spanwright_grammar.document",
+        "spanwright_grammar.formatting",
+    ),
     "spanwright_grammar.completion": _LANGUAGE,
     "spanwright_grammar.formatting": _LANGUAGE,
-    "spanwright_grammar.highlighting": _LANGUAGE,
+    "spanwright_grammar.highlighting": (*_LANGUAGE, "spanwright_grammar.document"),
     "spanwright_grammar.hover": _LANGUAGE,
     "spanwright_grammar.reference": _WORDS,
     "spanwright_grammar": _GRAMMAR,
-    # Computing: kernel < values < builtins, rendering < evaluator < session < records.
+    # Computing: kernel < values < rendering, settings < context < algebra < builtins < evaluator
+    # < sentences < session < records.
     "spanwright.kernel": (),
-    "spanwright.values": ("spanwright.kernel", *_TREE),
-    "spanwright.rendering": _ALGEBRA,
-    "spanwright.builtins": (*_ALGEBRA, *_TREE, *_WORDS),
-    "spanwright.evaluator": (*_LANGUAGE, *_ALGEBRA, "spanwright.builtins", "spanwright.rendering"),
-    "spanwright.session": (*_LANGUAGE, "spanwright_grammar", *_EVALUATION),
+    "spanwright.values": ("spanwright.kernel",),
+    "spanwright.settings": ("spanwright.kernel",),
+    "spanwright.rendering": (*_VALUES, "spanwright.tally"),
+    "spanwright.limits": (),
+    "spanwright.context": (*_TREE, *_VALUES, "spanwright.settings"),
+    "spanwright.algebra": (*_SHOWN, "spanwright.settings"),
+    "spanwright.theory": (*_TREE, *_GROUND),
+    "spanwright.builtins": (*_TREE, *_WORDS, *_GROUND, "spanwright.theory"),
+    "spanwright.evaluator": (
+        *_LANGUAGE,
+        *_GROUND,
+        "spanwright.algebra",
+        "spanwright.builtins",
+    ),
+    "spanwright.modular_action": ("spanwright.kernel", "spanwright.algebra"),
+    "spanwright.witness": (
+        *_VALUES,
+        "spanwright.settings",
+        "spanwright.algebra",
+        "spanwright.modular_action",
+    ),
+    "spanwright.claims": (*_TREE, *_COMPUTED, "spanwright.witness"),
+    "spanwright.derivations": (*_TREE, *_COMPUTED),
+    "spanwright.helping": (*_WORDS, *_GROUND, "spanwright.limits"),
+    "spanwright.sentences": (*_LANGUAGE, *_ANSWERS, *_MANY, "spanwright.drawing"),
+    "spanwright.views": _SHOWN,
+    "spanwright.files": (),
+    "spanwright.replies": (),
+    "spanwright.session": (
+        *_LANGUAGE,
+        "spanwright_grammar",
+        *_AROUND,
+        "spanwright.means",
+        "spanwright.reading",
+    ),
     "spanwright": _SESSION,
-    "spanwright.journal": _RECORDS,
-    "spanwright.replay": (*_RECORDS, "spanwright.journal"),
-    "spanwright.sweep": (*_RECORDS, "spanwright.journal"),
-    "spanwright.report": (*_RECORDS, "spanwright.journal", "spanwright.replay"),
+    "spanwright.headers": (
+        "spanwright",
+        "spanwright.kernel",
+        "spanwright.rendering",
+        "spanwright.settings",
+    ),
+    "spanwright.log_format": (*_LANGUAGE, "spanwright.rendering", "spanwright.replies"),
+    "spanwright.journal": (
+        *_LANGUAGE,
+        *(f"spanwright.{name}" for name in ("files", "headers", "log_format", "replies")),
+    ),
+    "spanwright.replay": (
+        *_LANGUAGE,
+        *(
+            f"spanwright.{name}"
+            for name in ("conversation", "files", "headers", "journal", "log_format", "replies")
+        ),
+    ),
+    "spanwright.reading": (*_LANGUAGE, *_COMPUTED),
+    # Many cases: tally, means, transport < cases < finished < pool < gateway < sweep < sentences.
+    "spanwright.tally": (),
+    "spanwright.tables": (),
+    "spanwright.confinement": (),
+    "spanwright.means": ("spanwright.files",),
+    "spanwright.drawing": _SHOWN,
+    "spanwright.transport": (*_LANGUAGE, *_COMPUTED),
+    "spanwright.guessing": (*_LANGUAGE, *_COMPUTED, "spanwright.transport"),
+    "spanwright.cases": (*_LANGUAGE, *_COMPUTED, "spanwright.transport"),
+    "spanwright.finished": ("spanwright.cases",),
+    "spanwright.pool": (
+        "spanwright.kernel",
+        *(f"spanwright.{name}" for name in ("cases", "confinement", "finished", "means")),
+    ),
+    "spanwright.gateway": tuple(f"spanwright.{name}" for name in ("cases", "finished", "pool")),
+    "spanwright.sweep": (*_LANGUAGE, *_COMPUTED, "spanwright.files", "spanwright.confinement",
+        *(name for name in _MANY if name not in ("spanwright.sweep", "spanwright.guessing"))),
+    # Processes of their own: a worker, and the client of a cluster.
+    "spanwright.casework": (*_LANGUAGE, *_SESSION, "spanwright.confinement"),
+    "spanwright.cluster": ("spanwright.confinement",),
+    "spanwright.report": (
+        *_LANGUAGE,
+        *_COMPUTED,
+        "spanwright.drawing",
+        "spanwright.log_format",
+    ),
+    "spanwright.log_commands": tuple(
+        f"spanwright.{name}"
+        for name in (
+            "conversation",
+            "files",
+            "headers",
+            "journal",
+            "replay",
+            "report",
+            "session",
+            "settings",
+        )
+    ),
+    # Processes: the front side sees plain data, the evaluator side the session.
+    "spanwright.frames": (),
+    "spanwright.process": ("spanwright.files", "spanwright.frames", "spanwright.replies"),
+    "spanwright.conversation": (
+        "spanwright_grammar.source",
+        *(f"spanwright.{name}" for name in ("files", "process", "replies", "session")),
+    ),
+    "spanwright.crashes": (*_TREE, "spanwright.context"),
+    "spanwright.evaluating": (
+        *_TREE,
+        "spanwright_grammar.parsing",
+        *_SESSION,
+        "spanwright.crashes",
+        "spanwright.frames",
+    ),
     # Showing: shell and server never see each other; cli sees all; nobody sees cli.
-    "spanwright.services": ("spanwright", *_PUBLIC_GRAMMAR, "spanwright.session"),
-    "spanwright.shell": _FRONT,
-    "spanwright.server": _FRONT,
+    "spanwright.services": ("spanwright", *_PUBLIC_GRAMMAR, "spanwright.replies"),
+    "spanwright.shell": (
+        *_FRONT,
+        *_PUBLIC_GRAMMAR,
+        *(f"spanwright.{name}" for name in ("files", "journal", "log_commands")),
+    ),
+    "spanwright.workspace": (
+        *_PUBLIC_GRAMMAR,
+        *("spanwright", "spanwright.services", "spanwright.files"),
+    ),
+    "spanwright.server": (
+        *_FRONT,
+        *_PUBLIC_GRAMMAR,
+        # its evaluator is a process of its own
+        *(f"spanwright.{name}" for name in ("confinement", "files", "session", "workspace")),
+    ),
+    "spanwright.editor_commands": (
+        *_PUBLIC_GRAMMAR,
+        *(f"spanwright.{name}" for name in ("files", "server", "workspace")),
+    ),
     "spanwright.cli": (
         *_PUBLIC_GRAMMAR,
         *_SESSION,
+        "spanwright.conversation",
         *(
             f"spanwright.{name}"
-            for name in ("journal", "replay", "sweep", "report", "services", "shell", "server")
+            for name in (
+                "editor_commands", "headers", "journal", "log_commands", "replay", "sweep",
+                "report", "services", "shell", "server",
+            )
         ),
         "spanwright",
     ),
@@ -95,7 +249,8 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
 
 # Packages of others: where each may be imported. A package without a row is not a dependency.
 THIRD_PARTY: dict[str, tuple[str, ...]] = {
-    "distributed": ("spanwright.sweep",),
+    "distributed": ("spanwright.cluster",),
+    "pyarrow": ("spanwright.tables",),
     "flint": ("spanwright.kernel",),
     "lark": ("spanwright_grammar.parsing",),
     "lsprotocol": ("spanwright.server",),
@@ -111,6 +266,14 @@ ONLY_INSIDE_FUNCTIONS = ("distributed", "spanwright.server", "spanwright.shell",
 PRINTS_IN = ("spanwright.cli", "spanwright.shell.loop")
 OPENS_FILES_IN = (
     "spanwright.cli",
+    "spanwright.files",
+    # how much memory is free, which /proc says
+    "spanwright.evaluating",
+    "spanwright.confinement",
+    "spanwright.editor_commands",
+    "spanwright.finished",
+    "spanwright.pool",
+    "spanwright.tables",
     "spanwright.journal",
     "spanwright.replay",
     "spanwright.report",
@@ -456,7 +619,7 @@ PLANTED = [
     ("spanwright.shell.prompt", "import pygls", "only for spanwright.server"),
     ("spanwright.shell.prompt", "print(1)", "prints"),
     ("spanwright.shell.prompt", "import spanwright.cli", "may not see spanwright.cli"),
-    ("spanwright.sweep", "import distributed", "inside the function"),
+    ("spanwright.cluster", "import distributed", "inside the function"),
     ("spanwright.cli", "import spanwright.shell.loop", "inside the function"),
     ("spanwright.cli", "from spanwright.server import main", "inside the function"),
     ("spanwright.cli", "from spanwright.session import *", "star import"),
@@ -492,7 +655,7 @@ ALLOWED = [
     ("spanwright.session", "from spanwright import evaluator\nimport json, time"),
     ("spanwright.shell.loop", "import prompt_toolkit\nimport spanwright.shell.prompt\nprint(1)"),
     ("spanwright.cli", "print(1)\nopen('a')\ndef f():\n    from spanwright.shell import loop"),
-    ("spanwright.sweep", "def f():\n    import distributed"),
+    ("spanwright.cluster", "def f():\n    import distributed"),
     ("spanwright", "from spanwright.session import Session"),
 ]
 

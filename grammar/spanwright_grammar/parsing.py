@@ -14,7 +14,7 @@ from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from math import gcd
 from pathlib import Path
-from typing import Any, NamedTuple
+from typing import Any, Literal, NamedTuple
 
 import lark
 from lark.exceptions import UnexpectedToken
@@ -53,14 +53,49 @@ class Chunk:
 
 
 @dataclass(frozen=True, slots=True)
+class Piece:
+    """What was read between two sentence ends; a block is its header, its sentences, its `end`.
+
+    `names` are those that a broken `let` was about to define.
+    """
+
+    span: Span
+    role: Literal["sentence", "opens", "end"]
+    sentence: syntax.Sentence | None
+    diagnostics: tuple[Diagnostic, ...] = ()
+    names: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Parsed:
-    """A whole text, in the order in which it was written; `chunks` keeps broken sentences too."""
+    """A whole text, in the order in which it was written.
+
+    `chunks` keeps broken sentences too; `pieces` has blocks taken apart, so that one broken
+    sentence in a block leaves the others readable.
+    """
 
     source: Source
     sentences: tuple[syntax.Sentence, ...]
     comments: tuple[Comment, ...]
     diagnostics: tuple[Diagnostic, ...]
     chunks: tuple[Chunk, ...]
+    pieces: tuple[Piece, ...]
+
+
+@dataclass(frozen=True)
+class Segment:
+    """A stretch of whole lines that is read the same wherever it stands; offsets are its own.
+
+    `opens_with` is the type of its first lexeme, nothing when it holds none but comments;
+    `is_closed` says that no sentence goes on behind it. Places in messages are still marked, see
+    `placed`.
+    """
+
+    text: str
+    pieces: tuple[Piece, ...]
+    comments: tuple[Comment, ...]
+    opens_with: str
+    is_closed: bool
 
 
 class ParseFailure(Exception):
@@ -85,16 +120,30 @@ def parse(source: Source) -> Parsed:
     >>> parse(Source("fix n = 3; x_1 E_201")).sentences[0]
     Fix('n', Number('3'))
     """
-    pieces, comments = _split(source)
+    split, comments = _split(source)
+    pieces = [_parse_piece(source, piece) for piece in split]
+    return assembled(
+        source,
+        [replace(p, diagnostics=tuple(placed(d, source) for d in p.diagnostics)) for p in pieces],
+        comments,
+    )
+
+
+def assembled(source: Source, pieces: list[Piece], comments: list[Comment]) -> Parsed:
+    """The pieces of a text put together: headers, bodies and `end`s become blocks."""
     chunks: list[Chunk] = []
     blocks: list[_Block] = []
     for piece in pieces:
-        if blocks and piece.is_end:
-            block = blocks.pop()
-            _place(block.close(piece.span.end), blocks, chunks)
+        if piece.role == "end":
+            if blocks:
+                block = blocks.pop()
+                _place(block.close(piece.span.end), blocks, chunks)
+            else:
+                lonely = error("end-without-block", piece.span, "`end` closes no block")
+                chunks.append(Chunk(piece.span, None, (lonely,)))
             continue
-        chunk = _parse_piece(source, piece)
-        if not piece.opens_block:
+        chunk = Chunk(piece.span, piece.sentence, piece.diagnostics)
+        if piece.role == "sentence":
             _place(chunk, blocks, chunks)
             continue
         header = chunk.sentence if isinstance(chunk.sentence, syntax.For) else None
@@ -106,8 +155,8 @@ def parse(source: Source) -> Parsed:
         blocks.append(block)
     end = len(source.text)
     if blocks:
-        start = blocks[-1].span.start
-        message = f"the block that `for` opens at {_where(source, start)} has no `end`"
+        line, column = source.position(blocks[-1].span.start)
+        message = f"the block that `for` opens at line {line}, column {column} has no `end`"
         blocks[-1].diagnostics.append(error("unclosed-block", Span(end, end), message, "end"))
     while blocks:
         block = blocks.pop()
@@ -119,7 +168,50 @@ def parse(source: Source) -> Parsed:
         tuple(comments),
         tuple(sorted((found for chunk in chunks for found in chunk.diagnostics), key=_by_place)),
         tuple(chunks),
+        tuple(pieces),
     )
+
+
+def segments(text: str) -> list[Segment]:
+    """The text cut at line ends where no sentence is open, each part read on its own.
+
+    What `parse` says of the text is what `assembled` says of the parts' pieces, moved to their
+    places.
+    """
+    splitter, _ = _run_splitter(Source(text))
+    edges = [0, *(edge for edge in splitter.boundaries if edge < len(text)), len(text)]
+    return [_read_segment(text[start:end]) for start, end in zip(edges, edges[1:]) if start < end]
+
+
+def _read_segment(text: str) -> Segment:
+    source = Source(text)
+    splitter, comments = _run_splitter(source)
+    pieces = tuple(_parse_piece(source, piece) for piece in splitter.pieces)
+    first = splitter.pieces[0].lexemes[0].type if splitter.pieces else ""
+    # A `;` in front keeps a sentence word from standing first in its line.
+    if splitter.leads_with_separator:
+        first = "SEMICOLON"
+    return Segment(text, pieces, tuple(comments), first, splitter.is_closed)
+
+
+def restarts(opens_with: str) -> bool:
+    """Does a line that opens with this lexeme end whatever sentence is still open before it?"""
+    return opens_with in _STARTS_SENTENCE_IN_BRACKETS
+
+
+_MARKED_PLACE = re.compile("\0@([0-9]{1,9})\0")
+
+
+def placed(found: Diagnostic, source: Source, offset: int = 0) -> Diagnostic:
+    """A finding with span and marked places moved by an offset, and the marks resolved."""
+    message = _MARKED_PLACE.sub(
+        lambda mark: "line {}, column {}".format(*source.position(int(mark[1]) + offset)),
+        found.message,
+    )
+    span = Span(found.span.start + offset, found.span.end + offset)
+    if message == found.message and not offset:
+        return found
+    return replace(found, span=span, message=message)
 
 
 def parse_expression(text: str) -> syntax.Expression:
@@ -281,6 +373,9 @@ class _Splitter:
     brackets: list[Lexeme] = field(default_factory=list)
     n_open: dict[str, int] = field(default_factory=lambda: dict.fromkeys(OPENERS, 0))
     problems: list[Diagnostic] = field(default_factory=list)
+    boundaries: list[int] = field(default_factory=list)  # line ends at which no sentence is open
+    is_closed: bool = True
+    leads_with_separator: bool = False
 
     def report(self, code: str, span: Span, message: str, *hints: str) -> None:
         if len(self.problems) < MAX_REPORTS:
@@ -298,7 +393,7 @@ class _Splitter:
                     "missing-bracket",
                     Span(at, at),
                     f"`{due}` is missing: `{_SIGNS[opener.type]}` was opened at "
-                    f"{_where(self.source, opener.start)}",
+                    f"{_where(opener.start)}",
                 )
             self.pieces.append(_Piece(self.lexemes, self.problems, is_open))
         self.lexemes, self.brackets, self.problems = [], [], []
@@ -320,7 +415,7 @@ class _Splitter:
                 message = (
                     f"`{_SIGNS[closer.type]}` stands where `{_SIGNS[OPENERS[opener.type]]}` is "
                     f"due: `{_SIGNS[opener.type]}` was opened at "
-                    f"{_where(self.source, opener.start)}"
+                    f"{_where(opener.start)}"
                 )
             self.report("unmatched-bracket", Span(closer.start, closer.end), message)
         while self.n_open[wanted]:
@@ -332,11 +427,18 @@ class _Splitter:
 
 def _split(source: Source) -> tuple[list[_Piece], list[Comment]]:
     """The text's sentences as lexemes, and its comments."""
+    splitter, comments = _run_splitter(source)
+    return splitter.pieces, comments
+
+
+def _run_splitter(source: Source) -> tuple[_Splitter, list[Comment]]:
     splitter = _Splitter(source)
     comments: list[Comment] = []
     may_restart = False  # does the next lexeme stand first in a line, or behind a `;`?
     line_is_blank = True
     last_end = 0
+    line_start = 0
+    is_first_in_line = True
     for lexeme in scan(source.text):
         kind = lexeme.type
         current = splitter.lexemes
@@ -346,7 +448,10 @@ def _split(source: Source) -> tuple[list[_Piece], list[Comment]]:
                 continues = current[-1].type in _CONTINUES and not (may_restart and line_is_blank)
                 if is_topic or not (splitter.brackets or continues):
                     splitter.finish(last_end)
-            may_restart = line_is_blank = True
+            line_start = lexeme.end
+            if not splitter.lexemes:
+                splitter.boundaries.append(line_start)
+            may_restart = line_is_blank = is_first_in_line = True
             continue
         line_is_blank = False
         if kind == "COMMENT":
@@ -355,14 +460,19 @@ def _split(source: Source) -> tuple[list[_Piece], list[Comment]]:
             comments.append(Comment(text, Span(lexeme.start, lexeme.end), is_result))
             continue
         if kind == "SEMICOLON" and (not splitter.brackets or current[0].type == "HELP"):
+            if not (splitter.pieces or current):
+                splitter.leads_with_separator = True
             splitter.finish(last_end)
             continue
         if may_restart and current:
             starts = _STARTS_SENTENCE_IN_BRACKETS if splitter.brackets else _STARTS_SENTENCE
             if kind in starts:
                 splitter.finish(last_end)
+                if is_first_in_line:
+                    splitter.boundaries.append(line_start)
                 current = splitter.lexemes
         may_restart = kind == "SEMICOLON"
+        is_first_in_line = False
         last_end = lexeme.end
         if not (current and current[0].type == "HELP"):
             if kind in OPENERS:
@@ -378,8 +488,9 @@ def _split(source: Source) -> tuple[list[_Piece], list[Comment]]:
         current.append(lexeme)
     current = splitter.lexemes
     asks_for_more = bool(current) and current[0].type != "HELP" and current[-1].type in _CONTINUES
+    splitter.is_closed = not current or (splitter.boundaries[-1:] == [len(source.text)])
     splitter.finish(last_end, asks_for_more)
-    return splitter.pieces, comments
+    return splitter, comments
 
 
 def _report_invalid(splitter: _Splitter, lexeme: Lexeme) -> None:
@@ -435,9 +546,9 @@ _INSTEAD = {
 }  # fmt: skip
 
 
-def _where(source: Source, offset: int) -> str:
-    line, column = source.position(offset)
-    return f"line {line}, column {column}"
+def _where(offset: int) -> str:
+    """A mark that `placed` turns into line and column."""
+    return f"\0@{offset}\0"
 
 
 def _by_place(found: Diagnostic) -> Span:
@@ -486,15 +597,33 @@ def _place(chunk: Chunk, blocks: list[_Block], chunks: list[Chunk]) -> None:
         blocks[-1].body.append(chunk.sentence)
 
 
-def _parse_piece(source: Source, piece: _Piece) -> Chunk:
+def _parse_piece(source: Source, piece: _Piece) -> Piece:
+    if piece.is_end:
+        return Piece(piece.span, "end", None, tuple(piece.problems))
+    chunk = _parse_chunk(source, piece)
+    role: Literal["sentence", "opens"] = "opens" if piece.opens_block else "sentence"
+    names = _names_of_broken(piece.lexemes) if chunk.sentence is None else ()
+    return Piece(chunk.span, role, chunk.sentence, chunk.diagnostics, names)
+
+
+def _names_of_broken(lexemes: list[Lexeme]) -> tuple[str, ...]:
+    if len(lexemes) > 1 and lexemes[0].type == "LET" and lexemes[1].type == "NAME":
+        names = [lexemes[1].text]
+        for comma, name in zip(lexemes[2::2], lexemes[3::2]):
+            if comma.type != "COMMA" or name.type != "NAME":
+                break
+            names.append(name.text)
+        return tuple(names)
+    return ()
+
+
+def _parse_chunk(source: Source, piece: _Piece) -> Chunk:
     span = piece.span
     if span.end - span.start > MAX_SENTENCE_LENGTH:
         message = f"a sentence of {span.end - span.start} characters; at most {MAX_SENTENCE_LENGTH}"
         return Chunk(span, None, (error("input-too-long", span, message),))
     if piece.problems:
         return Chunk(span, None, tuple(piece.problems))
-    if piece.is_end:
-        return Chunk(span, None, (error("end-without-block", span, "`end` closes no block"),))
     lexemes = assign_roles(piece.lexemes)
     deep = _deep_prefix(lexemes)
     if deep is not None:

@@ -111,6 +111,24 @@ def walk(node: Node) -> Iterator[Node]:
         stack.extend(reversed(list(children(current))))
 
 
+def shifted(node: Node, by: int) -> Any:
+    """The same tree with every span moved."""
+    made: dict[int, Node] = {}
+
+    def renewed(value: Any) -> Any:
+        if isinstance(value, Node):
+            return made[id(value)]
+        return tuple(map(renewed, value)) if isinstance(value, tuple) else value
+
+    # Prefix order backwards: what stands below a node is renewed before the node itself.
+    for current in reversed(list(walk(node))):
+        kind: Any = type(current)
+        start, end = current.place
+        values = [renewed(getattr(current, name)) for name in field_names(kind)]
+        made[id(current)] = kind(*values, Span(start + by, end + by))
+    return made[id(node)]
+
+
 def path_to(node: Node, offset: int) -> tuple[Node, ...]:
     """The nodes whose span holds the offset, outermost first; empty when there is none.
 

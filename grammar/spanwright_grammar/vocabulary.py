@@ -231,6 +231,11 @@ VOCABULARY: tuple[Entry, ...] = (
         "kostka((2,1), (1,1,1))", _SYMMETRIC, inputs="two partitions of one size",
     ),
     Entry(
+        "qtkostka", "function", "qtkostka(lambda, mu)",
+        "the q,t-Kostka polynomial, the coefficient of a plethystic Schur function in J_mu",
+        "qtkostka((2,1), (1,1,1))", _SYMMETRIC, inputs="two partitions of one size",
+    ),
+    Entry(
         "jack", "function", "jack(lambda)", "Jack polynomial with parameter alpha",
         "jack((2,1,0))", "H. Jack, A class of symmetric polynomials with a parameter, 1970",
         inputs="a partition",
@@ -342,7 +347,8 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "convention", "setting", "fix convention = word", "which published convention E_mu follows",
-        "fix convention = standard", _OURS, inputs="the word of a convention",
+        "fix convention = reversed", _OURS,
+        inputs="standard, or reversed: E_mu is the standard E_rev(mu)(x_n, …, x_1; 1/q, 1/t)",
     ),
     Entry(
         "hecke", "setting", "fix hecke = word", "the quadratic relation of the T_i",
@@ -351,7 +357,9 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "show", "setting", "fix show = word", "how coefficients are printed",
-        "fix show = factored", _OURS, inputs="factored or plain",
+        "fix show = factored", _OURS,
+        inputs="short: numerators of at most 16 terms, and products of binomials, are factored; "
+        "factored: all; expanded: none",
     ),
     Entry(
         "seconds", "setting", "fix seconds = k", "the time that a sentence may take",

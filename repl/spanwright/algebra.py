@@ -11,18 +11,22 @@ from fractions import Fraction
 from typing import Any, Protocol
 
 from spanwright.kernel import budget, indices, reduction
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import (
     DivisionByZero,
     Mixed,
     NotAUnit,
     OutsideDomain,
     OverBudget,
+    Pole,
     Unable,
 )
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Family
+from spanwright.kernel.families.registry import family
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
+from spanwright.rendering.scalars import scalar_text
 from spanwright.settings import Settings
 from spanwright.values import (
     IndexSet,
@@ -86,19 +90,51 @@ class ExactAlgebra:
 
     def element(self, target: Family, index: tuple[int, ...], n: int) -> Expansion:
         """A basis element; raises OutsideDomain for a wrong index."""
+        target = self.family(target.name)
         canonical = target.check_index(index, n)
         size = max(n, target.n_variables(canonical)) if target.grows else n
         return Expansion(target, size, {canonical: Scalar.one(ParameterRing.get())})
 
-    def double_schubert(self, w: tuple[int, ...], n: int) -> LaurentPolynomial:
+    def family(self, name: str) -> Family:
+        """The family that a symbol means in the convention in force."""
+        if name == "E" and self._settings.convention == "reversed":
+            from spanwright.kernel.families.reversed_macdonald import FAMILIES
+
+            return FAMILIES["E (reversed)"]
+        if name == "double Schubert":
+            from spanwright.kernel.families.double_schubert import FAMILIES as DOUBLE
+
+            return DOUBLE[name]
+        return family(name)
+
+    def held(self, value: Expansion) -> Any:
+        """An exact value as one of this algebra."""
+        return value
+
+    def reduced(self, value: Any) -> Any:
+        """The canonical form of a result: operator words are straightened where an algebra can."""
+        if is_operator(value):
+            from spanwright.kernel.operators.canonical import straighten
+
+            word = _as_word(value)
+            # tau_i acts, but has a denominator in Y: no algebra here holds it
+            return value if "tau" in word.kinds() else straighten(word)
+        return value
+
+    def double_schubert(self, w: tuple[int, ...], n: int) -> Expansion:
         """S_w(x;y)."""
-        raise Unable("double Schubert polynomials are not available yet")
+        return self.element(self.family("double Schubert"), w, n)
 
     def with_basement(
         self, mu: tuple[int, ...], w: tuple[int, ...], n: int
     ) -> Any:
         """E_(mu|w)."""
-        raise Unable("permuted basements are not available yet")
+        from spanwright.kernel.families.basements import with_basement
+
+        if self._settings.convention != "standard":
+            raise Unable("permuted basements are those of the standard convention",
+                         hints=("fix convention = standard",))
+        return with_basement(mu, w)
 
     def operator(self, kind: str, subscript: int | tuple[int, ...] | None, n: int) -> Any:
         """An operator letter."""
@@ -140,7 +176,7 @@ class ExactAlgebra:
             if scalar is not None:
                 return _scaled_operator(b, scalar)
             if isinstance(a, LaurentPolynomial | Expansion):
-                return self._as_multiplier(a) * b
+                return self._as_multiplier(a, b)
             raise Mixed(f"{kind_name(a)} does not multiply an operator")
         if isinstance(a, tuple) or isinstance(b, tuple):
             return self._index_product(a, b)
@@ -154,7 +190,7 @@ class ExactAlgebra:
                 raise DivisionByZero("division by zero")
             return simplest_number(1 / Fraction(value))
         if isinstance(value, Scalar | LaurentPolynomial):
-            return value.inverse() if isinstance(value, Scalar) else value.inverse()
+            return value.inverse()
         if isinstance(value, Expansion):
             polynomial = value.to_monomials()
             try:
@@ -163,7 +199,9 @@ class ExactAlgebra:
                 raise NotAUnit(
                     "a sum of basis elements has no inverse here: divide by a scalar") from None
         if is_operator(value):
-            return value.inverse()
+            from spanwright.kernel.operators.canonical import inverse
+
+            return inverse(_as_word(value))
         raise Mixed(f"{kind_name(value)} has no inverse")
 
     def power(self, base: Any, exponent: int) -> Any:
@@ -174,11 +212,13 @@ class ExactAlgebra:
             if base not in (0, 1, -1):
                 self._check_bits(_bits(base) * abs(exponent))
                 return simplest_number(Fraction(base) ** exponent)
-            return base if exponent % 2 or base == 0 and exponent else 1
+            return base if exponent % 2 or (base == 0 and exponent) else 1
         if is_operator(base):
             if abs(exponent) > 100_000:
                 raise OverBudget("this power of an operator is too large", code="too-large")
-            return base**exponent
+            from spanwright.kernel.operators.canonical import power
+
+            return power(_as_word(base), exponent)
         if is_index(base):
             if not indices.is_permutation(base):
                 raise Mixed("an index has no powers; a permutation has")
@@ -219,7 +259,8 @@ class ExactAlgebra:
 
     def coefficient(self, target: Family, index: tuple[int, ...], value: Any) -> Scalar:
         """The coefficient of a basis element in a value."""
-        expansion = reduction.expand(self.aligned(self._element(value)), target, self._n())
+        expansion = reduction.expand(
+            self.aligned(self._element(value)), self.family(target.name), self._n())
         return expansion.coefficient(index)
 
     def monomial_coefficient(self, element: Any, value: Any) -> Any:
@@ -256,17 +297,34 @@ class ExactAlgebra:
             return value.map_coefficients(lambda c: c.substitute(images))
         element = self._element(value)
         if parameters:
-            element = reduction.substitute(element, self._scalars(parameters))
+            element = self._substituted(element, self._scalars(parameters))
         if variables:
-            polynomial = reduction.to_polynomial(element, self._n())
-            values = {j: self._scalar(v) for j, v in variables.items() if j <= polynomial.n}
-            evaluated = polynomial.evaluate(values)
-            if len(values) == polynomial.n:
-                scalar = evaluated.as_scalar()
-                assert scalar is not None
-                return scalar
-            return evaluated
+            return self._evaluated(reduction.to_polynomial(element, self._n()), variables)
         return element
+
+    def _evaluated(self, polynomial: LaurentPolynomial, variables: dict[int, Any]) -> Any:
+        """Variables replaced: by scalars, or by polynomials, all at once."""
+        present = {j: v for j, v in variables.items() if j <= polynomial.n}
+        scalars = {j: as_scalar(v) for j, v in present.items()}
+        if all(c is not None for c in scalars.values()):
+            evaluated = polynomial.evaluate({j: c for j, c in scalars.items() if c is not None})
+            value = evaluated.as_scalar() if len(present) == polynomial.n else None
+            return evaluated if value is None else value
+        images = {
+            j: reduction.to_polynomial(self.aligned(self._element(v)), polynomial.n)
+            for j, v in present.items()}
+        return reduction.composed(polynomial, images)
+
+    def _substituted(self, element: Any, images: dict[str, Scalar]) -> Any:
+        """Parameters replaced; a pole is named by its coefficient."""
+        try:
+            return reduction.substitute(element, images)
+        except Pole as pole:
+            where = reduction.place_of_pole(element, images, self._n())
+            if where is None:
+                raise
+            at = ", ".join(f"{name} = {scalar_text(c)}" for name, c in images.items())
+            raise Pole(f"at {at} in the coefficient of {where[0]}", order=where[1]) from pole
 
     def limit(self, value: Any, name: str, target: Any) -> Any:
         """The limit of a value as a parameter goes to a scalar or to infinity."""
@@ -346,7 +404,7 @@ class ExactAlgebra:
         n = next(v.n for v in values if is_operator(v))
         result: Any = None
         for v in values:
-            lifted = v if is_operator(v) else self._as_operator(v, n)
+            lifted = _as_word(v if is_operator(v) else self._as_operator(v, n))
             result = lifted if result is None else result + lifted
         return result
 
@@ -360,7 +418,12 @@ class ExactAlgebra:
                 hints=("X_1",))
         return Operator.scalar(n, scalar, self._settings.hecke)
 
-    def _as_multiplier(self, value: LaurentPolynomial | Expansion) -> Any:
+    def _as_multiplier(self, value: LaurentPolynomial | Expansion, operator: Any) -> Any:
+        reflection = _single_reflection(operator)
+        if reflection is not None:
+            raise Mixed(
+                f"s_{reflection} is the reflection and has nothing to act on here; the Schur "
+                f"polynomial is s_({reflection})", hints=(f"s_({reflection})",))
         raise Mixed(
             "an operator at the end of a product has nothing to act on; as an operator, "
             "multiplication by x_j is X_j", hints=("X_1 T_1",))
@@ -368,20 +431,23 @@ class ExactAlgebra:
     def _act(self, operator: Any, value: Any) -> Any:
         """An operator times what stands to its right."""
         if is_operator(value):
-            return operator * value
+            return _as_word(operator) * _as_word(value)
         if isinstance(value, tuple):
             return self._operator_on_index(operator, value)
         scalar = as_scalar(value)
         if scalar is not None:
             return _scaled_operator(operator, scalar)
         if isinstance(value, LaurentPolynomial | Expansion):
-            from spanwright.kernel.operators import actions
+            from spanwright.kernel.operators.actions import act
 
-            return actions.apply(operator, self.aligned(value))
+            aligned = self.aligned(value)
+            assert not isinstance(aligned, Scalar)
+            return act(_as_word(operator), aligned)
         raise Mixed(f"an operator does not act on {kind_name(value)}")
 
     def _operator_on_index(self, operator: Any, index: tuple[int, ...]) -> tuple[int, ...]:
         """s_i mu, and products of reflections."""
+        operator = _as_word(operator)
         if operator.kinds() <= {"s"} and len(operator.terms) == 1:
             ((word, c),) = operator.terms.items()
             if c == 1 and operator.n == len(index):
@@ -392,12 +458,17 @@ class ExactAlgebra:
                     hints=("s_1 mu",))
 
     def _equal_operators(self, a: Any, b: Any) -> Truth:
-        from spanwright.kernel.operators.straightening import straighten
+        from spanwright.kernel.operators.canonical import is_same_operator, straighten
 
         n = a.n if is_operator(a) else b.n
-        left = a if is_operator(a) else self._as_operator(a, n)
-        right = b if is_operator(b) else self._as_operator(b, n)
-        difference = self.specialised_coefficients(straighten(left - right))
+        left = _as_word(a if is_operator(a) else self._as_operator(a, n))
+        right = _as_word(b if is_operator(b) else self._as_operator(b, n))
+        if is_same_operator(left, right):
+            return Truth(True)
+        try:
+            difference = self.specialised_coefficients(straighten(left - right))
+        except Mixed:
+            return Truth(False, left - right)
         return Truth(True) if difference.is_zero else Truth(False, difference)
 
     # indices
@@ -418,6 +489,21 @@ class ExactAlgebra:
             polynomial = reduction.to_polynomial(self.aligned(b), self._n())
             return polynomial.moved(lambda e: indices.act(w, e))
         raise Mixed(f"{kind_name(a)} and {kind_name(b)} have no product")
+
+
+def _as_word(operator: Any) -> Any:
+    """An operator in canonical form as the sum of words that it is."""
+    return operator.to_operator() if hasattr(operator, "to_operator") else operator
+
+
+def _single_reflection(operator: Any) -> int | None:
+    """The i of an operator that is the letter s_i, else None."""
+    if len(operator.terms) == 1:
+        ((word, c),) = operator.terms.items()
+        if c == 1 and len(word) == 1 and getattr(word[0], "kind", "") == "s":
+            position: int | None = word[0].simple_position()
+            return position
+    return None
 
 
 def _scaled_operator(operator: Any, scalar: Scalar) -> Any:

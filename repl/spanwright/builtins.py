@@ -9,9 +9,7 @@ from collections.abc import Callable
 from math import comb, factorial
 from typing import Any
 
-from spanwright_grammar import syntax
-from spanwright_grammar.vocabulary import lookup_all
-
+from spanwright import theory
 from spanwright.context import SIZE_LIMIT, Evaluation, failure
 from spanwright.kernel import indices, reduction
 from spanwright.kernel.expansions import Expansion
@@ -22,9 +20,10 @@ from spanwright.values import (
     as_scalar,
     is_element,
     is_index,
-    is_number,
     kind_name,
 )
+from spanwright_grammar import syntax
+from spanwright_grammar.vocabulary import lookup_all
 
 Builtin = Callable[[Evaluation, syntax.Call], Any]
 
@@ -95,7 +94,8 @@ def element_argument(e: Evaluation, node: syntax.Node) -> Any:
     if not is_element(value):
         raise failure("wrong-kind", node.place,
                       f"a polynomial or an expansion is needed here; this is {kind_name(value)}")
-    return as_scalar(value) or value if is_number(value) else value
+    scalar = as_scalar(value)
+    return value if scalar is None else scalar
 
 
 def scalar_argument(e: Evaluation, node: syntax.Node) -> Any:
@@ -244,7 +244,8 @@ def _abs(e: Evaluation, node: syntax.Call) -> Any:
 def _size_argument(e: Evaluation, node: syntax.Node) -> int:
     found = e.integer(node, "a size")
     if found < 0:
-        raise failure("setting-out-of-range", node.place, f"a size is not negative; this is {found}")
+        raise failure(
+            "setting-out-of-range", node.place, f"a size is not negative; this is {found}")
     return found
 
 
@@ -272,6 +273,8 @@ def _partitions(e: Evaluation, node: syntax.Call) -> Any:
 
 def _permutations(e: Evaluation, node: syntax.Call) -> Any:
     k = _size_argument(e, node.arguments[0])
+    if k > 10_000:
+        raise failure("too-large", node.place, "the permutations of more than 10,000 numbers")
     return IndexSet(
         f"permutations({k})", lambda: indices.permutations(k),
         lambda v: is_index(v) and len(v) == k and indices.is_permutation(v),
@@ -307,5 +310,12 @@ _TABLE: dict[str, tuple[int, int, Builtin]] = {
     "inverse": (1, 1, _inverse), "list": (0, 10**6, _list), "count": (1, 1, _count),
     "max": (1, 10**6, _max), "min": (1, 10**6, _min), "abs": (1, 1, _abs),
     "compositions": (1, 1, _compositions), "partitions": (1, 1, _partitions),
+    "norm": (1, 1, theory.norm), "inner": (2, 2, theory.inner),
+    "principal": (1, 1, theory.principal), "hooks": (1, 1, theory.hooks),
+    "kostka": (2, 2, theory.kostka), "qtkostka": (2, 2, theory.qtkostka),
+    "jack": (1, 1, theory.jack), "symmetric": (1, 1, theory.symmetric),
+    "positive": (1, 2, theory.positive), "stable": (1, 1, theory.stable),
+    "commutator": (2, 2, theory.commutator), "eigenvalue": (2, 2, theory.eigenvalue),
+    "matrix": (2, 2, theory.matrix),
     "permutations": (1, 1, _permutations), "subsets": (1, 1, _subsets), "orbit": (1, 1, _orbit),
 }

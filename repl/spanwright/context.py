@@ -6,13 +6,15 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any, Protocol
 
+from spanwright.kernel.parameters import ParameterRing
+from spanwright.settings import Settings
+from spanwright.values import IndexSet
 from spanwright_grammar import syntax
 from spanwright_grammar.diagnostics import Diagnostic
 from spanwright_grammar.source import Span
 
-from spanwright.kernel.coefficients import ParameterRing
-from spanwright.settings import Settings
-from spanwright.values import IndexSet
+MESSAGE_LENGTH = 500
+"""What a message quotes may be as long as the input; longer messages are cut."""
 
 SIZE_LIMIT = 1_000_000
 """Lists and sets are not written out beyond this many items."""
@@ -22,6 +24,12 @@ class Failure(Exception):
     """A sentence that cannot be carried out; the diagnostic says where, what, and what is right."""
 
     def __init__(self, diagnostic: Diagnostic, value: Any = None) -> None:
+        message = diagnostic.message
+        if len(message) > MESSAGE_LENGTH:
+            diagnostic = replace(diagnostic, message=f"{message[: MESSAGE_LENGTH - 2]} …")
+        hints = tuple(hint for hint in diagnostic.hints if len(hint) <= MESSAGE_LENGTH)
+        if hints != diagnostic.hints:
+            diagnostic = replace(diagnostic, hints=hints)
         super().__init__(diagnostic.message)
         self.diagnostic = diagnostic
         self.value = value

@@ -1,38 +1,37 @@
 """The seam between what shows and what computes: text in, plain replies out.
 
-The shell and the command line know a session only as a `Conversation`; whether it runs in this
-process or in another is none of their business.
+Shell and command line know a session only as a `Conversation`; whether it runs in this process or
+in another is none of their business. Importing this module loads neither kernel nor grammar.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+import os
+from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
-from spanwright.session import Reply, Session
+from spanwright.files import Folder
+from spanwright.replies import Progress, Reply, State
 
-
-@dataclass(frozen=True, slots=True)
-class State:
-    """What a prompt and a completer must know of a session.
-
-    `names` maps the session's own names to what they are ("a polynomial", "a function of a, b").
-    """
-
-    n: int | None
-    basis: str | None
-    parameters: tuple[str, ...]
-    names: dict[str, str]
-    last_tag: int
+if TYPE_CHECKING:
+    from spanwright.session import Session
 
 
 class Conversation(Protocol):
     """A session as those who show it see it."""
 
-    def say(self, text: str, name: str = "<shell>") -> Iterator[Reply]:
-        """Run all sentences of a text; the replies one after another, as they come."""
+    def say(
+        self, text: str, name: str = "<shell>",
+        on_progress: Callable[[Progress], None] | None = None, *,
+        is_recorded: bool = False, stops_at_first: bool = False,
+    ) -> Iterator[Reply]:
+        """Run all sentences of a text; the replies as they come, `on_progress` while they do not.
+
+        An interrupt while a reply is awaited ends the sentence at hand and the text, not the
+        session: the last reply is an error `stopped`. With `is_recorded` every reply has its
+        record; with `stops_at_first` nothing behind the first sentence that fails is run.
+        """
         ...
 
     def state(self) -> State:
@@ -45,42 +44,66 @@ class Conversation(Protocol):
 
 
 class LocalConversation:
-    """A session in this very process."""
+    """A session in this very process: for systems without fork, and for tests."""
 
-    def __init__(self, session: Session | None = None) -> None:
-        self._session = session or Session()
+    def __init__(self, session: Session, *, is_digested: bool = False) -> None:
+        self._session = session
+        self._is_digested = is_digested
 
-    def say(self, text: str, name: str = "<shell>") -> Iterator[Reply]:
-        """Run all sentences of a text."""
+    def say(
+        self, text: str, name: str = "<shell>",
+        on_progress: Callable[[Progress], None] | None = None, *,
+        is_recorded: bool = False, stops_at_first: bool = False,
+    ) -> Iterator[Reply]:
+        """Run all sentences of a text; an interrupt waits for the kernel call at hand."""
         from spanwright_grammar.source import Source
 
-        for outcome in self._session.run_all(Source(text, name)):
-            yield outcome.reply()
+        outcomes = self._session.run_all(Source(text, name))
+        while True:
+            try:
+                outcome = next(outcomes, None)
+                if outcome is None:
+                    return
+                is_wanted = is_recorded or outcome.status == "error"
+                reply = outcome.reply(
+                    is_recorded=is_wanted, is_digested=self._is_digested)
+            except KeyboardInterrupt:
+                yield self._stopped(text)
+                return
+            yield reply
+            if stops_at_first and reply.status != "ok":
+                return
+
+    def _stopped(self, text: str) -> Reply:
+        number = self._session.n_sentences
+        record = {"sentence": number, "line": 1, "source": text, "status": "error",
+                  "code": "stopped", "message": "stopped", "column": 1, "hint": None,
+                  "seconds": 0.0}
+        return Reply(number, 1, 1, text, "error", "error", None, None, "", (), ("stopped",),
+                     record, 0.0)
 
     def state(self) -> State:
         """What the session holds now."""
-        return state_of(self._session)
+        return self._session.state()
 
     def close(self) -> None:
         """Nothing to end."""
 
 
-def state_of(session: Session) -> State:
-    """The plain summary of a session."""
-    from spanwright.context import Function
-    from spanwright.values import kind_name
+def local(
+    folder: Folder | None = None, *, means: dict[str, Any] | None = None,
+    is_digested: bool = False,
+) -> Conversation:
+    """A conversation on this machine, in an evaluator process where the system has fork.
 
-    context = session.context
-    names = {
-        name: (f"a function of {', '.join(value.parameters)}" if isinstance(value, Function)
-               else kind_name(value))
-        for name, value in context.names.items()}
-    return State(context.settings.n, context.settings.basis, context.parameters, names,
-                 session.last_tag)
+    `means` says how many cases are run at once and by whom: the fields of `Means`, plain. With
+    `is_digested` replies carry the digest that logs record.
+    """
+    place = folder or Folder(Path.cwd())
+    if hasattr(os, "fork"):
+        from spanwright.process import ProcessConversation
 
+        return ProcessConversation(place, means=means, is_digested=is_digested)
+    from spanwright.session import Session
 
-def local(folder: Path | None = None) -> Conversation:
-    """A conversation with a fresh session in this process."""
-    from spanwright.files import Folder
-
-    return LocalConversation(Session(folder=Folder(folder or Path.cwd())))
+    return LocalConversation(Session(folder=place), is_digested=is_digested)

@@ -5,44 +5,80 @@ Never prints, never opens files, never keeps state: a `Context` goes in, values 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import replace
 from fractions import Fraction
+from math import comb, prod
 from typing import Any
-
-from spanwright_grammar import syntax
-from spanwright_grammar.diagnostics import Diagnostic
-from spanwright_grammar.source import Span
-from spanwright_grammar.spelling import nearest
-from spanwright_grammar.vocabulary import RESERVED, VOCABULARY, lookup_all
 
 from spanwright.algebra import ExactAlgebra
 from spanwright.builtins import call_builtin
 from spanwright.context import SIZE_LIMIT, Context, Failure, Function, failure
 from spanwright.kernel import indices
-from spanwright.kernel.coefficients import Scalar, from_decimal
-from spanwright.kernel.errors import KernelError, OverBudget, Pole
+from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.decimals import decimal, from_decimal
+from spanwright.kernel.errors import KernelError, OutsideDomain, Pole
+from spanwright.kernel.expansions import Expansion
+from spanwright.kernel.families.base import Family
 from spanwright.kernel.families.registry import NAMES as FAMILY_NAMES
 from spanwright.kernel.families.registry import family
+from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.reduction import rewritten_element
+from spanwright.rendering.text import element_text, monomial_text, text
 from spanwright.values import (
     FamilyMark,
     IndexSet,
     Infinity,
     ListValue,
     Truth,
+    as_scalar,
     is_index,
     is_number,
     kind_name,
 )
+from spanwright_grammar import syntax
+from spanwright_grammar.diagnostics import CODES, Diagnostic
+from spanwright_grammar.source import Span
+from spanwright_grammar.spelling import nearest
+from spanwright_grammar.vocabulary import RESERVED, VOCABULARY, lookup_all
 
 # kernel codes that have another name among the diagnostics
 _CODES = {
     "outside-domain": "wrong-kind", "mixed": "cannot-combine", "unable": "not-available-yet",
     "too-many-terms": "too-large", "indeterminate": "pole", "no-root": "not-a-unit",
     "bad-index": "negative-part", "too-many-parts": "wrong-number-of-parts",
+    "mixed-parameters": "cannot-combine", "needs-more-variables": "wrong-number-of-parts",
+    "too-few-variables": "wrong-number-of-parts", "negative-power": "not-in-span",
+    "not-a-polynomial": "not-in-span", "outside-the-algebra": "not-in-span",
+    "too-large-part": "wrong-kind",
 }
 
+_WHAT_IS_RIGHT = {
+    "division-by-zero": ("a divisor that is not 0",),
+    "not-a-unit": ("a scalar or a monomial as divisor, f/(1 - t) or x_1^-1 f",),
+    "not-symmetric": ("expand f in E",),
+}
 
+TRUTH_WORDS = {"true": True, "false": False, "holds": True, "fails": False}
+"""Names of the truth values; `holds` and `fails` are how they are printed."""
+
+LARGEST_Y = 1_000_000
+"""More parameters y_i than this are taken for a slip of the finger."""
+
+LARGEST_PART = 10**9
+"""Indices with larger parts are refused."""
+
+SMALL_POWER = 50
+"""Powers up to this are computed without an estimate of their size."""
+
+LARGEST_POWER_BITS = 4 * 10**8
+"""About 50 megabytes, some seconds of printing."""
+
+LARGEST_CALL_DEPTH = 200
+"""Functions that call themselves more deeply than this are taken to do so without end."""
+
+LARGEST_DEPTH = 3_000
+"""Expressions inside functions inside expressions, in all; Python's own stack holds more."""
 
 class Evaluator:
     """Evaluates expressions in one context, over an algebra (exact, or modulo a prime)."""
@@ -52,28 +88,38 @@ class Evaluator:
         self.algebra = algebra if algebra is not None else ExactAlgebra(context)
         self._local: dict[str, Any] = {}
         self._depth = 0
+        self._call_depth = 0
 
     # entry
 
     def value(self, node: syntax.Node) -> Any:
         """The value of an expression; raises Failure with the place of the innermost fault."""
+        self._depth += 1
         try:
+            if self._depth > LARGEST_DEPTH:
+                raise failure("nesting-too-deep", node.place,
+                              "functions inside functions, more deeply than can be evaluated")
             return _RULES[type(node)](self, node)
         except KernelError as error:
             raise self.placed(error, node) from error
         except MemoryError as error:
             raise failure("over-budget", node.place, "the memory for this is not there") from error
+        finally:
+            self._depth -= 1
 
     def placed(self, error: KernelError, node: syntax.Node) -> Failure:
         """A kernel error at the place of a node, in the reader's words."""
         code = _CODES.get(error.code, error.code)
+        code = code if code in CODES else "wrong-kind"
         message = error.fact
         hints = error.hints
         if isinstance(error, Pole):
             message = f"pole of order {error.order}: {message}" if error.order > 1 else \
                 f"pole: {message}"
-        if isinstance(error, OverBudget) and code == "too-large" and not hints:
+        if error.code == "too-many-terms" and not hints:
             hints = ("fix terms = …   to allow more terms",)
+        if not hints and (code != "not-a-unit" or "polynomial" in message):
+            hints = _WHAT_IS_RIGHT.get(code, ())
         shown = Failure(Diagnostic("error", code, node.place, message, tuple(hints)))
         shown.value = getattr(error, "difference", None)
         return shown
@@ -118,8 +164,8 @@ class Evaluator:
             return self.require_n(node)
         if name == "infinity":
             return Infinity()
-        if name in ("true", "false"):
-            return Truth(name == "true")
+        if name in TRUTH_WORDS:
+            return Truth(TRUTH_WORDS[name])
         if name in FAMILY_NAMES:
             return FamilyMark(family(name))
         if name in ("symmetrizer", "antisymmetrizer"):
@@ -135,11 +181,13 @@ class Evaluator:
 
     def unknown(self, name: str, span: Span) -> Failure:
         """An unknown name, with the nearest known one."""
-        known = [*self._local, *self.context.names, *self.context.parameters,
-                 *(e.name for e in VOCABULARY
-                   if e.kind in ("family", "operator", "function", "set", "parameter"))]
-        near = nearest(name, known)
-        hints = (near,) if near else (f"let {name} = …",)
+        own = [*self._local, *self.context.names, *self.context.parameters]
+        words = [e.name for e in VOCABULARY
+                 if e.kind in ("family", "operator", "function", "set", "parameter")]
+        # one's own names first; of the language's words not those of one letter: all are near
+        near = nearest(name, own) or nearest(name, [word for word in words if len(word) > 1])
+        definition = f"let {name} = …"
+        hints = (near, definition) if near else (definition,)
         return failure("unknown-name", span, f"{name} is not defined", *hints)
 
     # numbers and indices
@@ -170,32 +218,44 @@ class Evaluator:
             if digits and len(node.digits) > 1:
                 return tuple(int(d) for d in node.digits)
             return from_decimal(node.digits)
-        if isinstance(node, syntax.Tuple):
-            return tuple(self.integer(item, "a part of an index") for item in node.items)
         value = self.value(node.inner) if isinstance(node, syntax.Group) else self.value(node)
         if is_index(value):
-            return tuple(value)
+            return self.bounded(value, node)
         found = self.as_integer(value)
         if found is None:
             raise failure("wrong-kind", node.place,
-                          f"a subscript is an integer or an index; this is {kind_name(value)}")
-        return (found,) if isinstance(node, syntax.Group) else found
+                          f"a subscript is an integer or an index; this is {kind_name(value)}",
+                          "x_1", "E_(1,0,2)")
+        return self.bounded((found,), node) if isinstance(node, syntax.Group) else found
 
-    def position(self, node: syntax.Node, top: int, what: str) -> int:
-        """A position 1..top."""
+    def bounded(self, index: tuple[int, ...], node: syntax.Node) -> tuple[int, ...]:
+        """An index whose parts are of a size that can be worked with."""
+        if any(abs(part) > LARGEST_PART for part in index):
+            raise failure("too-large", node.place,
+                          f"the parts of an index go up to {LARGEST_PART:,} here")
+        return index
+
+    def position(
+        self, node: syntax.Node, top: int, what: str, reason: str | None = None
+    ) -> int:
+        """A position 1..top; `reason` says why it ends there, when it is not n."""
         found = self.integer(node.inner if isinstance(node, syntax.Group) else node)
         if not 1 <= found <= top:
-            raise self.out_of_range(node, found, top, what)
+            raise self.out_of_range(node, found, top, what, reason)
         return found
 
-    def out_of_range(self, node: syntax.Node, found: int, top: int, what: str) -> Failure:
+    def out_of_range(
+        self, node: syntax.Node, found: int, top: int, what: str, reason: str | None = None
+    ) -> Failure:
         """A position outside 1..top."""
         if top < 1:
-            return failure("position-out-of-range", node.place, f"{what} needs n of 2 or more")
+            return failure("position-out-of-range", node.place,
+                           reason or f"{what} needs n of 2 or more")
         nearest_position = min(max(found, 1), top)
         return failure(
             "position-out-of-range", node.place,
-            f"{what}_{found} does not exist: positions go from 1 to {top} (n = {self.n})",
+            f"{what}_{brief(found)} does not exist: "
+            + (reason or f"positions go from 1 to {top} (n = {self.n})"),
             f"{what}_{nearest_position}")
 
     # subscripts
@@ -210,7 +270,10 @@ class Evaluator:
             return self.result(node)
         if head in ("x", "X", "Y", "y"):
             n = self.require_n(node)
-            j = self.position(node.index, n if head != "y" else 10**6, head)
+            if head == "y":
+                j = self.position(node.index, LARGEST_Y, head, f"i goes from 1 to {LARGEST_Y:,}")
+            else:
+                j = self.position(node.index, n, head)
             if head == "x":
                 return self.algebra.generator(n, j)
             if head == "y":
@@ -253,7 +316,9 @@ class Evaluator:
             return self.member(own, node, at)
         items = own.items if isinstance(own, ListValue) else own
         if isinstance(items, tuple):
-            at = self.position(node.index, len(items), node.head) if items else 0
+            n_parts = len(items)
+            counted = "1 part" if n_parts == 1 else f"{n_parts} parts"
+            at = self.position(node.index, n_parts, node.head, f"{node.head} has {counted}")
             return items[at - 1]
         raise failure("wrong-kind", node.place,
                       f"{node.head} is {kind_name(own)}: it has no parts")
@@ -277,12 +342,23 @@ class Evaluator:
         if found is None:
             last = max(self.context.results, default=0)
             hints = (f"eq_{last}",) if last else ()
-            raise failure("unknown-name", node.place, f"there is no result ({tag})", *hints)
+            raise failure("unknown-name", node.place, f"no result has the tag {brief(tag)}",
+                          *hints)
         return found
 
     def element(self, name: str, node: syntax.Node, at: tuple[int, ...] | int) -> Any:
         """A basis element of a family."""
         n = self.require_n(node)
+        vanishing = rewritten_element(family(name), at if isinstance(at, tuple) else (at,), n)
+        if vanishing is not None:
+            return self.algebra.held(vanishing)
+        target, index = self.checked_index(name, node, at, n)
+        return self.algebra.element(target, index, n)
+
+    def checked_index(
+        self, name: str, node: syntax.Node, at: tuple[int, ...] | int, n: int
+    ) -> tuple[Family, tuple[int, ...]]:
+        """A family and a canonical index of it; raises Failure for a wrong one, with a hint."""
         target = family(name)
         index = at if isinstance(at, tuple) else (at,)
         if target.index_kind == "permutation" and not indices.is_permutation(index):
@@ -291,10 +367,11 @@ class Evaluator:
                 f"{_shown(index)} is not a permutation of 1..{len(index)} in one-line notation",
                 f"{name}_{_shown(_near_permutation(index))}")
         try:
-            return self.algebra.element(target, index, n)
+            return target, target.check_index(index, n)
         except KernelError as error:
             found = self.placed(error, node)
-            hint = _index_hint(name, index, n, found.diagnostic.code)
+            hint = _digits_hint(name, node, n) or \
+                _index_hint(name, index, n, found.diagnostic.code)
             if hint and not found.diagnostic.hints:
                 found = Failure(replace(found.diagnostic, hints=(hint,)))
             raise found from error
@@ -322,7 +399,8 @@ class Evaluator:
                 _shown(_near_permutation(w)))
         if len(w) > n:
             raise failure("wrong-number-of-parts", node.place,
-                          f"{_shown(w)} moves more than the n = {n} positions here")
+                          f"{_shown(w)} moves more than the n = {n} positions here",
+                          f"fix n = {len(w)}")
         return indices.extended(w, n)
 
     def operator(self, node: syntax.Subscripted) -> Any:
@@ -362,14 +440,20 @@ class Evaluator:
                 "not-a-function", node.place,
                 f"{node.function} is {kind_name(own)}, not a function",
                 f"{node.function} (…)   with a space, for a product")
+        kinds = {entry.kind for entry in lookup_all(node.function)}
+        if "parameter" in kinds or node.function in self.context.parameters:
+            raise failure(
+                "not-a-function", node.place, f"{node.function} is a scalar, not a function",
+                f"{node.function} (…)   with a space, for a product")
         return call_builtin(self, node)
 
     def apply(self, function: Function, arguments: tuple[Any, ...], node: syntax.Node) -> Any:
         """Evaluate a function's body with its parameters bound."""
-        self._depth += 1
-        if self._depth > 60:
+        self.algebra.check_budget()
+        if self._call_depth >= LARGEST_CALL_DEPTH:
             raise failure("nesting-too-deep", node.place,
                           f"{function.name} calls itself without end")
+        self._call_depth += 1
         saved = self._local
         self._local = dict(zip(function.parameters, arguments, strict=True))
         try:
@@ -377,12 +461,15 @@ class Evaluator:
         except Failure as inner:
             # the fault lies in the definition's text; the caller's place is what can be shown
             found = inner.diagnostic
+            prefix = f"in {function.name}: "
+            is_said = found.code == "nesting-too-deep" or found.message.startswith(prefix)
+            message = found.message if is_said else f"{prefix}{found.message}"
             raise Failure(Diagnostic(
-                found.severity, found.code, node.place, f"in {function.name}: {found.message}",
-                found.hints), inner.value) from inner
+                found.severity, found.code, node.place, message, found.hints),
+                inner.value) from inner
         finally:
             self._local = saved
-            self._depth -= 1
+            self._call_depth -= 1
 
     # bindings
 
@@ -434,6 +521,12 @@ class Evaluator:
                       f"a statement is needed here; this is {kind_name(value)}", "f = g")
 
 
+def brief(number: int) -> str:
+    """An integer in a message: the digits, or how many they are."""
+    digits = decimal(number)
+    return digits if len(digits) < 30 else f"({len(digits):,} digits)"
+
+
 def _shown(index: tuple[int, ...]) -> str:
     return f"({','.join(map(str, index))})"
 
@@ -447,6 +540,15 @@ def _near_permutation(index: tuple[int, ...]) -> tuple[int, ...]:
     return tuple(found)
 
 
+def _digits_hint(name: str, node: syntax.Node, n: int) -> str | None:
+    """E_(1,0,2) for E_{102}: only without brackets are digits read one by one."""
+    inside = node.index if isinstance(node, syntax.Subscripted) else None
+    if isinstance(inside, syntax.Group) and isinstance(inside.inner, syntax.Number) \
+            and len(inside.inner.digits) == n > 1:
+        return f"{name}_({','.join(inside.inner.digits)})"
+    return None
+
+
 def _index_hint(name: str, index: tuple[int, ...], n: int, code: str) -> str | None:
     """An index of the same family that would be right."""
     if code == "wrong-number-of-parts":
@@ -454,6 +556,8 @@ def _index_hint(name: str, index: tuple[int, ...], n: int, code: str) -> str | N
         return f"{name}_{_shown(right)}"
     if code == "not-a-partition":
         return f"{name}_{_shown(indices.decreasing(index))}"
+    if code == "negative-part":
+        return f"{name}_{_shown(tuple(max(part, 0) for part in index))}"
     return None
 
 
@@ -469,7 +573,8 @@ def _string(e: Evaluator, node: syntax.String) -> Any:
 
 
 def _tuple(e: Evaluator, node: syntax.Tuple) -> Any:
-    return tuple(e.integer(item, "a part of an index") for item in node.items)
+    return e.bounded(
+        tuple(e.integer(item, "a part of an index") for item in node.items), node)
 
 
 def _group(e: Evaluator, node: syntax.Group) -> Any:
@@ -477,21 +582,26 @@ def _group(e: Evaluator, node: syntax.Group) -> Any:
 
 
 def _set(e: Evaluator, node: syntax.SetDisplay) -> Any:
-    items = tuple(dict.fromkeys(e.value(item) for item in node.items))
-    for item, place in zip(items, node.items, strict=False):
-        if not (is_number(item) or is_index(item)):
+    found: dict[Any, None] = {}
+    for place in node.items:
+        value = e.value(place)
+        item = value if is_index(value) else e.as_integer(value)
+        if item is None:
             raise failure("wrong-kind", place.place,
-                          f"a set holds integers or indices; this is {kind_name(item)}")
-    shown = ", ".join(_shown(i) if isinstance(i, tuple) else str(i) for i in items)
-    return IndexSet(f"{{{shown}}}", lambda: iter(items), lambda v: v in items, lambda: len(items))
+                          f"a set holds integers or indices; this is {kind_name(value)}")
+        found[item] = None
+    items = tuple(found)
+    shown = ", ".join(_shown(i) if isinstance(i, tuple) else decimal(i) for i in items)
+    return IndexSet(f"{{{shown}}}", lambda: iter(items), lambda v: v in found, lambda: len(items))
 
 
 def _range(e: Evaluator, node: syntax.Range) -> Any:
     low = e.integer(node.low, "an end of a range")
     high = e.integer(node.high, "an end of a range")
     span = range(low, high + 1)
-    return IndexSet(f"{low}..{high}", lambda: iter(span),
-                    lambda v: isinstance(v, int) and v in span, lambda: len(span))
+    # len() of a range has an upper limit
+    return IndexSet(f"{decimal(low)}..{decimal(high)}", lambda: iter(span),
+                    lambda v: isinstance(v, int) and v in span, lambda: max(0, high - low + 1))
 
 
 def _alphabets(e: Evaluator, node: syntax.Alphabets) -> Any:
@@ -518,7 +628,8 @@ def _sum(e: Evaluator, node: syntax.Sum) -> Any:
     for term in node.terms:
         value = e.value(term.node)
         values.append(e.algebra.negate(value) if term.sign < 0 else value)
-    return e.algebra.add(values) if len(values) > 1 else values[0]
+    result = e.algebra.add(values) if len(values) > 1 else values[0]
+    return e.bounded(result, node) if is_index(result) else result
 
 
 def _product(e: Evaluator, node: syntax.Product) -> Any:
@@ -532,34 +643,86 @@ def _product(e: Evaluator, node: syntax.Product) -> Any:
             result = value if result is None else e.algebra.multiply(value, result)
         except KernelError as error:
             raise e.placed(error, factor.node) from error
+    return e.bounded(result, node) if is_index(result) else result
+
+
+def _exponent(e: Evaluator, node: syntax.Expression) -> Any:
+    """An exponent; braces are brackets here, as in TeX: x_1^{-1}."""
+    if isinstance(node, syntax.SetDisplay) and len(node.items) == 1:
+        return e.value(node.items[0])
+    if isinstance(node, syntax.SetDisplay) and node.items:
+        return _tuple(e, syntax.Tuple(node.items, node.place))
+    return e.value(node)
+
+
+def _multi_power(e: Evaluator, letter: str, node: syntax.Power) -> Any:
+    """x^mu, X^mu, Y^mu."""
+    n = e.require_n(node)
+    exponent = _exponent(e, node.exponent)
+    is_bracketed = isinstance(node.exponent, syntax.Group | syntax.SetDisplay)
+    if is_bracketed and e.as_integer(exponent) is not None:
+        exponent = (exponent,)
+    if not is_index(exponent):
+        raise failure("wrong-kind", node.place, f"{letter}^mu needs an index as exponent",
+                      f"{letter}^(2,0,1)", f"{letter}_1^2")
+    if len(exponent) != n:
+        raise failure("wrong-number-of-parts", node.exponent.place,
+                      f"{letter}^{_shown(exponent)} has {len(exponent)} exponents, the ring has "
+                      f"n = {n}", f"{letter}^{_shown(indices.padded(exponent, n)[:n])}")
+    if letter == "x":
+        return e.algebra.monomial(n, exponent)
+    # the letters commute
+    result = e.algebra.power(e.algebra.operator(letter, 1, n), 0)
+    for j, power in enumerate(exponent, 1):
+        if power:
+            raised = e.algebra.power(e.algebra.operator(letter, j, n), power)
+            result = e.algebra.multiply(result, raised)
     return result
 
 
 def _power(e: Evaluator, node: syntax.Power) -> Any:
-    if isinstance(node.base, syntax.Name) and node.base.name == "x" and e.lookup("x") is None:
-        n = e.require_n(node)
-        exponent = e.value(node.exponent)
-        if isinstance(node.exponent, syntax.Group) and e.as_integer(exponent) is not None:
-            exponent = (exponent,)
-        if not is_index(exponent):
-            raise failure("wrong-kind", node.place, "x^mu needs an index as exponent",
-                          "x^(2,0,1)", "x_1^2")
-        if len(exponent) != n:
-            raise failure("wrong-number-of-parts", node.exponent.place,
-                          f"x^{_shown(exponent)} has {len(exponent)} exponents, the ring has "
-                          f"n = {n}", f"x^{_shown(indices.padded(exponent, n)[:n])}")
-        return e.algebra.monomial(n, exponent)
+    if isinstance(node.base, syntax.Name) and node.base.name in ("x", "X", "Y"):
+        return _multi_power(e, node.base.name, node)
     base = e.value(node.base)
-    exponent = e.value(node.exponent)
-    if isinstance(exponent, Fraction) and exponent.denominator == 2 and \
-            isinstance(node.base, syntax.Name) and node.base.name == "t":
-        return e.algebra.power(e.algebra.root_of_t(), exponent.numerator)
+    exponent = _exponent(e, node.exponent)
+    if isinstance(exponent, Fraction):
+        bare = node.base
+        while isinstance(bare, syntax.Group):
+            bare = bare.inner
+        is_t = isinstance(bare, syntax.Name) and bare.name == "t" and e.lookup("t") is None
+        if is_t and exponent.denominator == 2:
+            return e.algebra.power(e.algebra.root_of_t(), exponent.numerator)
+        raise failure("not-an-integer", node.exponent.place,
+                      "of all fractional powers only t^(1/2) and its powers exist here",
+                      "t^(1/2)")
     whole = e.as_integer(exponent)
     if whole is None:
         raise failure("not-an-integer", node.exponent.place,
-                      f"an exponent is an integer; this is {kind_name(exponent)}",
-                      *(("t^(1/2)",) if isinstance(exponent, Fraction) else ()))
+                      f"an exponent is an integer; this is {kind_name(exponent)}")
+    if isinstance(base, Scalar):
+        _check_power(base, abs(whole), node)
     return e.algebra.power(base, whole)
+
+
+def _check_power(base: Scalar, exponent: int, node: syntax.Node) -> None:
+    """Refuse a power of a scalar that no memory would hold when it is multiplied out."""
+    if exponent <= SMALL_POWER:
+        return
+    form = base.form("short")
+    for polynomial, multiplicity in (*form.numerator, *form.denominator):
+        n_factors = exponent * multiplicity
+        rows = list(polynomial.terms())
+        degrees: dict[str, Fraction] = {}
+        for _, powers in rows:
+            for name, power in powers:
+                degrees[name] = max(degrees.get(name, Fraction(0)), Fraction(power))
+        box = prod(int(degree * n_factors) + 1 for degree in degrees.values())
+        n_terms = min(box, comb(n_factors + len(rows) - 1, len(rows) - 1))
+        height = max(abs(c).bit_length() for c, _ in rows) + len(rows).bit_length() - 1
+        if n_terms * n_factors * max(height, 1) > LARGEST_POWER_BITS:
+            raise failure("too-large", node.place,
+                          f"multiplied out this power would have about {n_terms:,} terms of up "
+                          f"to {n_factors * height * 3 // 10:,} digits")
 
 
 def _size(e: Evaluator, node: syntax.Size) -> Any:
@@ -577,16 +740,19 @@ def _size(e: Evaluator, node: syntax.Size) -> Any:
 
 def _coefficient(e: Evaluator, node: syntax.Coefficient) -> Any:
     operand = e.value(node.operand)
-    if isinstance(node.element, syntax.Subscripted) and node.element.head in FAMILY_NAMES \
-            and e.lookup(node.element.head) is None:
-        target = family(node.element.head)
-        at = e.index(node.element.index, digits=e.n != 1)
-        n = e.require_n(node)
-        if not (node.element.head == "s" and isinstance(at, int)):
-            index = target.check_index(at if isinstance(at, tuple) else (at,), n)
-            return e.algebra.coefficient(target, index, operand)
-    element = e.value(node.element)
-    return e.algebra.monomial_coefficient(element, operand)
+    inside = node.element
+    if isinstance(inside, syntax.Subscripted) and inside.head in FAMILY_NAMES \
+            and e.lookup(inside.head) is None and not isinstance(inside.index, syntax.Basement):
+        n = e.require_n(inside)
+        at = e.index(inside.index, digits=n != 1)
+        if not (inside.head == "s" and isinstance(at, int)):
+            return e.algebra.coefficient(*e.checked_index(inside.head, inside, at, n), operand)
+    element = e.value(inside)
+    try:
+        return e.algebra.monomial_coefficient(element, operand)
+    except OutsideDomain as error:
+        raise failure("wrong-kind", inside.place, error.fact, "[E_(1,0,2)] f", "[x_1^2] f") \
+            from error
 
 
 def _big_operator(e: Evaluator, node: syntax.BigOperator) -> Any:
@@ -626,21 +792,97 @@ def _specialise(e: Evaluator, node: syntax.Specialise) -> Any:
             variables[e.position(target.index, e.require_n(target), "x")] = value
         elif isinstance(target, syntax.Subscripted) and target.head == "y":
             parameters[f"y_{e.integer(target.index)}"] = value
+        elif isinstance(target, syntax.Name) and e.lookup(target.name) is None \
+                and not lookup_all(target.name):
+            raise failure("unknown-name", target.place, f"{target.name} is not a parameter",
+                          f"let {target.name} be a parameter")
         else:
             raise failure("wrong-kind", target.place,
                           "parameters and variables can be given values, nothing else",
                           "f at q = 0", "f at x_1 = 1")
-    return e.algebra.specialise(operand, parameters, variables)
+    try:
+        return e.algebra.specialise(operand, parameters, variables)
+    except (Pole, OutsideDomain) as error:
+        if not (isinstance(error, Pole) or error.code == "indeterminate"):
+            raise
+        point = [*parameters.items(), *((f"x_{j}", v) for j, v in sorted(variables.items()))]
+        raise _pole(error, operand, parameters, _where(point), node) from error
 
 
 def _point(e: Evaluator, node: syntax.Node, n: int) -> list[Any]:
-    items = node.items if isinstance(node, syntax.Tuple) else None
-    if items is None and isinstance(node, syntax.Group) and n == 1:
-        items = (node.inner,)
-    if items is None or len(items) != n:
+    if isinstance(node, syntax.Tuple):
+        values = [e.value(item) for item in node.items]
+    else:
+        value = e.value(node)
+        values = list(value) if is_index(value) else \
+            list(value.items) if isinstance(value, ListValue) else [value]
+    if len(values) != n:
         raise failure("wrong-number-of-parts", node.place,
-                      f"x takes {n} values here", f"x = ({','.join(['1'] * n)})")
-    return [e.value(item) for item in items]
+                      f"x takes {n} values here, one for each variable",
+                      f"x = ({','.join(['1'] * n)})")
+    return values
+
+
+def _where(point: Iterable[tuple[str, Any]], sign: str = "=") -> str:
+    return ", ".join(f"{name} {sign} {text(value)}" for name, value in point)
+
+
+def _pole(
+    error: KernelError, value: Any, images: dict[str, Any], where: str, node: syntax.Node,
+    *hints: str,
+) -> Failure:
+    """A pole under specialisation: its order, the point, and the coefficient that has it."""
+    found = worst_coefficient(value, images)
+    order, element = found or (getattr(error, "order", 1), "")
+    place = f" in the coefficient of {element}" if element else ""
+    if not isinstance(error, Pole):
+        return failure("pole", node.place, f"at {where}{place}: {error.fact}", *error.hints)
+    named = "a pole" if order == 1 else f"a pole of order {order}"
+    if not hints and len(images) == 1:
+        ((name, at),) = images.items()
+        hints = (f"{_vanishing(name, at, order)} f at {where}",)
+    return failure("pole", node.place, f"{named} at {where}{place}", *(error.hints or hints))
+
+
+def _vanishing(name: str, value: Any, order: int) -> str:
+    """The power of a linear factor that takes a pole away, as text."""
+    shown = text(value)
+    if shown == "0":
+        base = name
+    else:
+        base = f"({name} - {shown if shown.isalnum() else f'({shown})'})"
+    return base if order == 1 else f"{base}^{order}"
+
+
+def worst_coefficient(value: Any, images: dict[str, Any]) -> tuple[int, str] | None:
+    """The highest order of a pole among the coefficients, and the element that it stands at."""
+    scalars = {name: as_scalar(v) for name, v in images.items()}
+    known = {name: v for name, v in scalars.items() if v is not None}
+    if not isinstance(value, Expansion | LaurentPolynomial):
+        return None
+    forms: list[Expansion | LaurentPolynomial] = [value]
+    if isinstance(value, Expansion):
+        forms.append(value.to_monomials())
+    for form in forms:
+        worst: tuple[int, str] | None = None
+        for index, c in form.items():
+            try:
+                c.substitute(known)
+            except Pole as pole:
+                if worst is None or pole.order > worst[0]:
+                    worst = pole.order, element_name(form, index)
+            except KernelError:
+                worst = worst or (1, element_name(form, index))
+        if worst is not None:
+            return worst
+    return None
+
+
+def element_name(value: Expansion | LaurentPolynomial, index: tuple[int, ...]) -> str:
+    """E_(0,2), x_1 x_3^2, or 1."""
+    if isinstance(value, Expansion):
+        return element_text(value.family.name, value.family.show_index(index, value.n))
+    return monomial_text(index) or "1"
 
 
 def _limit(e: Evaluator, node: syntax.Limit) -> Any:
@@ -652,7 +894,22 @@ def _limit(e: Evaluator, node: syntax.Limit) -> Any:
         raise failure("wrong-kind", variable.place, "a limit runs over a parameter",
                       "f as q -> 0")
     assert isinstance(variable, syntax.Name)
-    return e.algebra.limit(operand, variable.name, e.value(node.target))
+    name, target = variable.name, e.value(node.target)
+    try:
+        return e.algebra.limit(operand, name, target)
+    except Pole as error:
+        images = {name: target}
+        where = _where(images.items())
+        if not isinstance(target, Infinity):
+            hint = f"{_vanishing(name, target, error.order)} f as {name} -> {text(target)}"
+            raise _pole(error, operand, images, where, node, hint) from error
+        # at infinity the order of the pole is that at 0 of the inverse
+        inverted = e.algebra.inverse(e.algebra.parameter(name))
+        turned = e.algebra.specialise(operand, {name: inverted}, {})
+        found = worst_coefficient(turned, {name: 0})
+        order = found[0] if found else error.order
+        hint = f"{name}^-{order} f as {name} -> infinity"
+        raise _pole(error, turned, {name: 0}, where, node, hint) from error
 
 
 def _comparison(e: Evaluator, node: syntax.Comparison) -> Any:
@@ -660,7 +917,8 @@ def _comparison(e: Evaluator, node: syntax.Comparison) -> Any:
     operator = node.operator
     if operator == "in":
         if isinstance(right, IndexSet):
-            return Truth(bool(right.contains(left)))
+            whole = e.as_integer(left)
+            return Truth(bool(right.contains(left if whole is None else whole)))
         if isinstance(right, ListValue):
             return Truth(any(e.algebra.equal(left, item).holds for item in right.items))
         raise failure("wrong-kind", node.right.place,
@@ -672,11 +930,11 @@ def _comparison(e: Evaluator, node: syntax.Comparison) -> Any:
             raise e.placed(error, node) from error
         return found if operator == "=" else Truth(not found.holds)
     a, b = _comparable(e, left), _comparable(e, right)
-    if a is None or b is None or type(a) is not type(b):
-        wrong = node.left if a is None else node.right
-        raise failure("wrong-kind", wrong.place,
-                      f"{operator} compares numbers; this is "
-                      f"{kind_name(left if a is None else right)}")
+    if a is None or b is None:
+        wrong, value = (node.left, left) if a is None else (node.right, right)
+        what = "a scalar with parameters" if isinstance(value, Scalar) else kind_name(value)
+        raise failure("wrong-kind", wrong.place, f"{operator} compares numbers; this is {what}",
+                      "|mu| < 3")
     holds = {"<": a < b, "<=": a <= b, ">": a > b, ">=": a >= b}[operator]
     return Truth(holds)
 
@@ -708,8 +966,18 @@ def _read(e: Evaluator, node: syntax.ReadFile) -> Any:
                   'let f = read "f.json"')
 
 
+def _basement(e: Evaluator, node: syntax.Basement) -> Any:
+    raise failure("wrong-kind", node.place, "only E has permuted basements",
+                  "E_((1,0,2)|(2,1,3))")
+
+
 def _comprehension(e: Evaluator, node: syntax.Comprehension) -> Any:
-    return ListValue(tuple(e.value(node.body) for _ in e.bound(node.bindings, node.condition)))
+    items = []
+    for _ in e.bound(node.bindings, node.condition):
+        items.append(e.value(node.body))
+        if len(items) > SIZE_LIMIT:
+            raise failure("too-large", node.place, f"a list of more than {SIZE_LIMIT:,} items")
+    return ListValue(tuple(items))
 
 
 _RULES: dict[type, Callable[[Evaluator, Any], Any]] = {
@@ -721,5 +989,5 @@ _RULES: dict[type, Callable[[Evaluator, Any], Any]] = {
     syntax.BigOperator: _big_operator, syntax.Specialise: _specialise, syntax.Limit: _limit,
     syntax.Comparison: _comparison, syntax.Negation: _negation,
     syntax.Conjunction: _conjunction, syntax.Disjunction: _disjunction,
-    syntax.ReadFile: _read, syntax.Comprehension: _comprehension,
+    syntax.ReadFile: _read, syntax.Comprehension: _comprehension, syntax.Basement: _basement,
 }

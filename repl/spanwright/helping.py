@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
+from spanwright.context import Context, Function
+from spanwright.limits import LIMITS
+from spanwright.rendering.text import text
 from spanwright_grammar.spelling import nearest
 from spanwright_grammar.vocabulary import VOCABULARY, Entry, by_kind, lookup_all
-
-from spanwright.context import Context, Function
-from spanwright.rendering.text import text
 
 _HEADS = {
     "sentence": "Sentences", "family": "Families", "operator": "Operators",
@@ -23,6 +23,8 @@ def page(topic: str | None) -> str | None:
     if topic is None:
         return _overview()
     word = topic.strip()
+    if word.lower() in ("limits", "limit"):
+        return _limits()
     entries = lookup_all(word)
     if entries:
         return "\n\n".join(_entry(e) for e in entries)
@@ -34,7 +36,8 @@ def page(topic: str | None) -> str | None:
 
 def nearest_topic(word: str) -> str | None:
     """The nearest word that help knows."""
-    return nearest(word, [*(e.name for e in VOCABULARY), *(h.lower() for h in _HEADS.values())])
+    heads = (head.lower() for head in _HEADS.values())
+    return nearest(word, [*(e.name for e in VOCABULARY), *heads, "limits"])
 
 
 def _overview() -> str:
@@ -46,7 +49,16 @@ def _overview() -> str:
     for kind, head in _HEADS.items():
         names = dict.fromkeys(e.name for e in by_kind(kind))
         lines.append(f"{head}: {' '.join(names)}")
-    lines += ["", "help and a word explains it: help E, help claim, help settings."]
+    lines += ["", "help and a word explains it: help E, help claim, help settings, help limits."]
+    return "\n".join(lines)
+
+
+def _limits() -> str:
+    rows = [(f"{e.family} at {e.values}", e.becomes, e.claim, e.source) for e in LIMITS]
+    width = max(len(r[0]) for r in rows)
+    lines = ["What the families become at special parameters (n = 3 in the claims):"]
+    for head, becomes, claim, source in rows:
+        lines += [f"  {head.ljust(width)}  {becomes}", f"      {claim}", f"      {source}"]
     return "\n".join(lines)
 
 

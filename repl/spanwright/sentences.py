@@ -6,20 +6,15 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import Any
 
-from spanwright_grammar import syntax
-from spanwright_grammar.printing import print_tree
-from spanwright_grammar.source import Source
-from spanwright_grammar.spelling import nearest
-from spanwright_grammar.vocabulary import RESERVED
-
-from spanwright import derivations, helping, settings
+from spanwright import derivations, drawing, guessing, helping, settings, sweep
 from spanwright.claims import decide
-from spanwright.context import Context, Failure, Function, failure
-from spanwright.evaluator import Evaluator
+from spanwright.context import Context, Function, failure
+from spanwright.evaluator import TRUTH_WORDS, Evaluator, brief, worst_coefficient
 from spanwright.kernel import reduction
+from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.errors import KernelError, Pole
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.registry import NAMES as FAMILY_NAMES
-from spanwright.kernel.families.registry import family
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering import forms
 from spanwright.rendering.text import text
@@ -28,14 +23,17 @@ from spanwright.values import (
     Infinity,
     ListValue,
     Setting,
-    Table,
     Text,
-    Truth,
     as_scalar,
     is_element,
     is_operator,
     kind_name,
 )
+from spanwright_grammar import syntax
+from spanwright_grammar.printing import print_tree
+from spanwright_grammar.source import Source
+from spanwright_grammar.spelling import nearest
+from spanwright_grammar.vocabulary import RESERVED, lookup_all
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +58,11 @@ class Surface:
 
 def carry_out(sentence: syntax.Sentence, context: Context, surface: Surface) -> Step:
     """Carry one sentence out; raises Failure, and then nothing has changed."""
-    return _SENTENCES[type(sentence)](sentence, context, surface)
+    try:
+        return _SENTENCES[type(sentence)](sentence, context, surface)
+    except KernelError as error:
+        # outside every expression: the sentence is the place
+        raise Evaluator(context).placed(error, sentence) from error
 
 
 def shown(value: Any, context: Context) -> str:
@@ -84,21 +86,32 @@ def _fix(node: syntax.Fix, context: Context, surface: Surface) -> Step:
 
 
 def _setting_text(name: str, value: Any, node: syntax.Fix) -> str:
-    if name == "memory" and value is not None:
+    if value is None:
+        return "free"
+    if name == "memory":
         return print_tree(node.value)
-    return "free" if value is None else str(value) if not as_scalar(value) else text(value)
+    return text(value) if isinstance(value, Scalar) else str(value)
 
 
-def _whole(low: int, high: int) -> Callable[[syntax.Fix, Context], Any]:
-    def rule(node: syntax.Fix, context: Context) -> int:
+def _whole(
+    low: int, high: int, *, may_be_free: bool = False
+) -> Callable[[syntax.Fix, Context], Any]:
+    def rule(node: syntax.Fix, context: Context) -> int | None:
+        if may_be_free and _is_free(node):
+            return None
         found = Evaluator(context).integer(node.value, f"the setting {node.setting}")
         if not low <= found <= high:
-            raise failure("setting-out-of-range", node.value.place,
-                          f"{node.setting} lies between {low} and {high:,}; this is {found}",
-                          f"fix {node.setting} = {min(max(found, low), high)}")
+            raise failure(
+                "setting-out-of-range", node.value.place,
+                f"{node.setting} lies between {low} and {high:,}; this is {brief(found)}",
+                f"fix {node.setting} = {min(max(found, low), high)}")
         return found
 
     return rule
+
+
+def _is_free(node: syntax.Fix) -> bool:
+    return isinstance(node.value, syntax.Name) and node.value.name == "free"
 
 
 def _word(node: syntax.Fix, context: Context) -> str:
@@ -127,8 +140,11 @@ def _parameter_value(node: syntax.Fix, context: Context) -> Any:
     if isinstance(node.value, syntax.Name) and node.value.name in ("free", node.setting):
         return None
     unfixed = replace(context, settings=context.settings.changed(**{node.setting: None}))
-    value = Evaluator(unfixed).value(node.value)
+    evaluator = Evaluator(unfixed)
+    value = evaluator.value(node.value)
     scalar = as_scalar(value)
+    if scalar is not None:
+        scalar = _finished(scalar, evaluator, node.value)
     if scalar is None:
         raise failure("wrong-kind", node.value.place,
                       f"{node.setting} takes a scalar; this is {kind_name(value)}",
@@ -145,7 +161,7 @@ _UNITS = {"kB": 10**3, "MB": 10**6, "GB": 10**9}
 
 def _memory(node: syntax.Fix, context: Context) -> int | None:
     value = node.value
-    if isinstance(value, syntax.Name) and value.name == "free":
+    if _is_free(node):
         return None
     if isinstance(value, syntax.Product) and len(value.factors) == 2:
         amount, unit = (f.node for f in value.factors)
@@ -163,7 +179,7 @@ def _memory(node: syntax.Fix, context: Context) -> int | None:
 _SETTINGS: dict[str, Callable[[syntax.Fix, Context], Any]] = {
     "n": _whole(1, settings.LARGEST_N), "q": _parameter_value, "t": _parameter_value,
     "basis": _basis, "convention": _word, "hecke": _word, "show": _word,
-    "seconds": _whole(1, 10**7), "terms": _whole(1, 10**9), "memory": _memory,
+    "seconds": _whole(1, 10**7, may_be_free=True), "terms": _whole(1, 10**9), "memory": _memory,
     "jobs": _whole(1, 512), "certainty": _word, "seed": _whole(0, 10**18),
 }
 
@@ -172,7 +188,7 @@ _SETTINGS: dict[str, Callable[[syntax.Fix, Context], Any]] = {
 
 
 def _check_name(name: str, node: syntax.Node, context: Context) -> None:
-    if name in RESERVED or name in ("true", "false", "free"):
+    if name in RESERVED or name in TRUTH_WORDS or name == "free":
         raise failure("name-taken", node.place,
                       f"{name} is a word of the language and cannot be given a new meaning",
                       f"let {name}1 = …")
@@ -218,12 +234,15 @@ def _defined(
 
 def _let_parameters(node: syntax.LetParameters, context: Context, surface: Surface) -> Step:
     for name in node.names:
-        _check_name(name, node, context)
+        # q, t, alpha and beta are parameters already, and may be said to be
+        if not any(entry.kind == "parameter" for entry in lookup_all(name)):
+            _check_name(name, node, context)
     names = tuple(dict.fromkeys((*context.parameters, *node.names)))
     remaining = {k: v for k, v in context.names.items() if k not in node.names}
     changed = replace(context, parameters=names, names=remaining)
-    listed = ", ".join(node.names)
-    verb = "is a parameter" if len(node.names) == 1 else "are parameters"
+    fresh = tuple(dict.fromkeys(node.names))
+    listed = ", ".join(fresh)
+    verb = "is a parameter" if len(fresh) == 1 else "are parameters"
     return Step(changed, Definition(listed, f"{listed} {verb}"))
 
 
@@ -232,31 +251,57 @@ def _let_parameters(node: syntax.LetParameters, context: Context, surface: Surfa
 
 def _finished(value: Any, evaluator: Evaluator, node: syntax.Node) -> Any:
     """A value as it is shown and kept: settings applied."""
+    basis = evaluator.context.settings.basis
     try:
-        value = evaluator.algebra.specialised_coefficients(value)
-        basis = evaluator.context.settings.basis
+        value = _fixed(value, evaluator, node)
         if basis and isinstance(value, LaurentPolynomial | Expansion):
-            return in_basis(value, basis, evaluator.n or value.n)
+            value = in_basis(value, basis, evaluator)
+            # coefficients of a change of basis contain parameters that may be fixed
+            value = _fixed(value, evaluator, node)
         return value
-    except reduction.KernelError as error:
+    except KernelError as error:
         raise evaluator.placed(error, node) from error
 
 
-def in_basis(value: Any, basis: str, n: int) -> Any:
+def _fixed(value: Any, evaluator: Evaluator, node: syntax.Node) -> Any:
+    """A value with `fix q = …` and `fix t = …` applied to its coefficients."""
+    try:
+        return evaluator.algebra.specialised_coefficients(value)
+    except Pole as error:
+        images = evaluator.context.settings.images()
+        point = ", ".join(f"{name} = {text(v)}" for name, v in images.items())
+        order, element = worst_coefficient(value, images) or (error.order, "")
+        named = "a pole" if order == 1 else f"a pole of order {order}"
+        place = f" in the coefficient of {element}" if element else ""
+        hints = [f"fix {name} = free" for name in images]
+        raise failure("pole", node.place, f"{named} at {point}{place}", *hints) from error
+
+
+def in_basis(value: Any, basis: str, evaluator: Evaluator) -> Any:
     """A value expanded in a family, or in monomials for `x`."""
+    n = evaluator.n or value.n
     if basis == "x":
         return reduction.to_polynomial(value, n)
-    return reduction.expand(value, family(basis), n)
+    return reduction.expand(value, evaluator.algebra.family(basis), n)
 
 
 def _expression(
     node: syntax.ExpressionSentence, context: Context, surface: Surface
 ) -> Step:
     evaluator = Evaluator(context)
-    value = _finished(evaluator.value(node.expression), evaluator, node.expression)
+    value = _reduced(evaluator.value(node.expression), evaluator, node.expression)
     if isinstance(value, Infinity):
         raise failure("wrong-kind", node.place, "infinity is the target of a limit, no value")
     return Step(context, value, is_tagged=True)
+
+
+def _reduced(value: Any, evaluator: Evaluator, node: syntax.Node) -> Any:
+    """A value in canonical form, operator words straightened, settings applied."""
+    try:
+        value = evaluator.algebra.reduced(value)
+    except KernelError as error:
+        raise evaluator.placed(error, node) from error
+    return _finished(value, evaluator, node)
 
 
 def _expand(node: syntax.Expand, context: Context, surface: Surface) -> Step:
@@ -264,7 +309,7 @@ def _expand(node: syntax.Expand, context: Context, surface: Surface) -> Step:
     value = evaluator.value(node.expression)
     try:
         return Step(context, expanded(value, node.targets, evaluator, node), is_tagged=True)
-    except reduction.KernelError as error:
+    except KernelError as error:
         raise evaluator.placed(error, node.expression) from error
 
 
@@ -275,21 +320,23 @@ def expanded(
     if isinstance(value, ListValue):
         return ListValue(tuple(expanded(v, targets, evaluator, node) for v in value.items))
     if is_operator(value):
-        from spanwright.kernel.operators.straightening import straighten
+        from spanwright.kernel.operators.canonical import straighten
 
-        return straighten(value, targets)
+        word = value.to_operator() if hasattr(value, "to_operator") else value
+        return evaluator.algebra.specialised_coefficients(straighten(word, targets))
     if not is_element(value):
-        raise failure("wrong-kind", node.place, f"{kind_name(value)} has no expansion")
+        raise failure("wrong-kind", node.place, f"{kind_name(value)} has no expansion",
+                      "expand x_1 E_mu in E")
     if len(targets) != 1 or targets[0] not in (*FAMILY_NAMES, "x"):
         wrong = next((t for t in targets if t not in (*FAMILY_NAMES, "x")), targets[0])
         raise failure("wrong-kind", node.place,
                       f"{wrong} is no basis here: one of x, {', '.join(FAMILY_NAMES)}",
                       "expand f in E")
-    n = evaluator.require_n(node)
-    element = as_scalar(value) or value
-    algebra = evaluator.algebra
-    found = in_basis(algebra.aligned(element), targets[0], n)
-    return algebra.specialised_coefficients(found)
+    evaluator.require_n(node)
+    scalar = as_scalar(value)
+    element = value if scalar is None else scalar
+    found = in_basis(evaluator.algebra.aligned(element), targets[0], evaluator)
+    return _fixed(found, evaluator, node)
 
 
 def _claim(node: syntax.Claim, context: Context, surface: Surface) -> Step:
@@ -301,35 +348,20 @@ def _claim(node: syntax.Claim, context: Context, surface: Surface) -> Step:
 
 
 def _for(node: syntax.For, context: Context, surface: Surface) -> Step:
-    raise failure("not-available-yet", node.place,
-                  "`for … : …` is part of the language, but nothing here runs it yet")
+    tally = sweep.run_for(node, context, surface, carry_out)
+    return Step(context, tally, has_failed=not tally.holds)
 
 
 def _find(node: syntax.Find, context: Context, surface: Surface) -> Step:
-    evaluator = Evaluator(context)
-    found = []
-    for bound in evaluator.bound(node.bindings, node.condition):
-        values = tuple(bound.values())
-        found.append(values[0] if len(values) == 1 else ListValue(values))
-    return Step(context, ListValue(tuple(found)), is_tagged=True)
+    return Step(context, sweep.run_find(node, context, surface, carry_out), is_tagged=True)
 
 
 def _tabulate(node: syntax.Tabulate, context: Context, surface: Surface) -> Step:
-    if node.path is not None:
-        raise failure("not-available-yet", node.place,
-                      "tables in files are part of the language, but nothing here writes them yet")
-    evaluator = Evaluator(context)
-    rows = []
-    for bound in evaluator.bound(node.bindings, node.condition):
-        value = _finished(evaluator.value(node.expression), evaluator, node.expression)
-        rows.append((*bound.values(), value))
-    columns = (*(b.name for b in node.bindings), print_tree(node.expression))
-    return Step(context, Table(columns, tuple(rows)))
+    return Step(context, sweep.run_tabulate(node, context, surface, carry_out))
 
 
 def _guess(node: syntax.Guess, context: Context, surface: Surface) -> Step:
-    raise failure("not-available-yet", node.place,
-                  "`guess` is part of the language, but nothing here runs it yet")
+    return Step(context, guessing.run_guess(node, context))
 
 
 # explanations and renderings
@@ -340,13 +372,21 @@ def _derive(node: syntax.Derive, context: Context, surface: Surface) -> Step:
 
 
 def _draw(node: syntax.Draw, context: Context, surface: Surface) -> Step:
-    raise failure("not-available-yet", node.place,
-                  "`draw` is part of the language, but nothing here draws yet")
+    evaluator = Evaluator(context)
+    value = _finished(evaluator.value(node.expression), evaluator, node.expression)
+    try:
+        drawn = drawing.picture(value)
+    except drawing.NotDrawable as error:
+        raise failure("wrong-kind", node.expression.place, str(error), "draw (2,0,1)") from error
+    if node.path is None:
+        return Step(context, Text(drawing.as_text(drawn)))
+    where = surface.write(node.path, drawing.as_svg(drawn), node)
+    return Step(context, Text(f"# drawn in {where}"))
 
 
 def _show(node: syntax.Show, context: Context, surface: Surface) -> Step:
     evaluator = Evaluator(context)
-    value = _finished(evaluator.value(node.expression), evaluator, node.expression)
+    value = _reduced(evaluator.value(node.expression), evaluator, node.expression)
     return Step(context, Text(_rendered(value, node.form, context, node)))
 
 
@@ -362,7 +402,7 @@ def _rendered(value: Any, form: str, context: Context, node: syntax.Node) -> str
 
 def _write(node: syntax.Write, context: Context, surface: Surface) -> Step:
     evaluator = Evaluator(context)
-    value = _finished(evaluator.value(node.expression), evaluator, node.expression)
+    value = _reduced(evaluator.value(node.expression), evaluator, node.expression)
     content = _rendered(value, node.form, context, node)
     where = surface.write(node.path, content + "\n", node)
     return Step(context, Text(f"{len(content) + 1:,} characters written to {where}"))
@@ -398,6 +438,15 @@ def _recall(node: syntax.Recall, context: Context, surface: Surface) -> Step:
     return Step(context, Text(f"{print_tree(subject)} = {shown(value, context)}"))
 
 
+def _tag_of(subject: syntax.Node, context: Context) -> int | None:
+    """The tag that `7` or `eq_7` names, else None."""
+    if isinstance(subject, syntax.Number):
+        return Evaluator(context).integer(subject, "a tag")
+    if isinstance(subject, syntax.Subscripted) and subject.head == "eq":
+        return Evaluator(context).integer(subject.index, "a tag")
+    return None
+
+
 def _forget(node: syntax.Forget, context: Context, surface: Surface) -> Step:
     names = dict(context.names)
     results = dict(context.results)
@@ -407,10 +456,10 @@ def _forget(node: syntax.Forget, context: Context, surface: Surface) -> Step:
             del names[subject.name]
         elif isinstance(subject, syntax.Name) and subject.name in parameters:
             parameters = tuple(p for p in parameters if p != subject.name)
-        elif isinstance(subject, syntax.Number) and int(subject.digits[:9]) in results:
-            del results[int(subject.digits[:9])]
-        elif isinstance(subject, syntax.Subscripted) and subject.head == "eq":
-            results.pop(Evaluator(context).integer(subject.index, "a tag"), None)
+        elif (tag := _tag_of(subject, context)) is not None:
+            if tag not in results:
+                raise failure("unknown-name", subject.place, f"no result has the tag {brief(tag)}")
+            del results[tag]
         elif isinstance(subject, syntax.Name):
             raise Evaluator(context).unknown(subject.name, subject.place)
         else:

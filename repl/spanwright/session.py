@@ -8,49 +8,32 @@ from __future__ import annotations
 
 import sys
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
+from spanwright import means
+from spanwright.context import Context, Failure, Function, failure
+from spanwright.files import FileRefused, Folder
+from spanwright.kernel import budget
+from spanwright.reading import NoValue, value_from_json
+from spanwright.rendering.digest import digest
+from spanwright.rendering.json import data, kind_of
+from spanwright.rendering.layout import note, term_lines
+from spanwright.rendering.text import text
+from spanwright.replies import Reply, State
+from spanwright.sentences import Step, Surface, carry_out
+from spanwright.settings import LARGEST_N, Settings
+from spanwright.values import Text, kind_name
+from spanwright.views import View
 from spanwright_grammar import syntax
 from spanwright_grammar.diagnostics import Diagnostic, format_diagnostic
 from spanwright_grammar.parsing import Chunk, parse
 from spanwright_grammar.source import Source, Span
 
-from spanwright.context import Context, Failure, failure
-from spanwright.files import FileRefused, Folder
-from spanwright.kernel import budget
-from spanwright.rendering.json import data
-from spanwright.rendering.layout import term_lines
-from spanwright.rendering.text import text
-from spanwright.sentences import Step, Surface, carry_out
-from spanwright.settings import Settings
-from spanwright.values import Text
-from spanwright.views import View
-
 # nested brackets, functions and sums need a few Python frames each; the parser bounds them
 RECURSION_LIMIT = 20_000
-
-
-@dataclass(frozen=True, slots=True)
-class Reply:
-    """One sentence's outcome as plain data, ready to be shown or sent to another process."""
-
-    sentence: int
-    line: int
-    column: int
-    source: str
-    status: str
-    kind: str
-    tag: int | None
-    n: int | None
-    text: str
-    terms: tuple[str, ...]
-    messages: tuple[str, ...]
-    record: dict[str, Any]
-    seconds: float
-    is_quit: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,6 +64,12 @@ class Outcome:
         return self.source.position(self.span.start)[0]
 
     @property
+    def fault_line(self) -> int:
+        """The line of the first diagnostic, or of the sentence when there is none."""
+        at = self.diagnostics[0].span if self.diagnostics else self.span
+        return self.source.position(at.start)[0]
+
+    @property
     def text(self) -> str:
         """The value, or the messages, as text."""
         if self.status == "error":
@@ -99,7 +88,7 @@ class Outcome:
         return None if value is None else value._repr_latex_()
 
     def record(self) -> dict[str, Any]:
-        """The outcome as JSON Lines hold it."""
+        """The outcome as JSON Lines hold it; the line of an error is that of the fault."""
         line, column = self.source.position(self.span.start)
         head: dict[str, Any] = {
             "sentence": self.sentence, "line": line,
@@ -108,7 +97,7 @@ class Outcome:
             first = self.diagnostics[0]
             line, column = self.source.position(first.span.start)
             head.update(
-                kind="error", code=first.code, message=first.message, line=line, column=column,
+                code=first.code, message=first.message, line=line, column=column,
                 hint=first.hints[0] if first.hints else None)
         else:
             content = data(self.raw)
@@ -122,25 +111,30 @@ class Outcome:
         head["seconds"] = round(self.seconds, 4)
         return head
 
-    def reply(self) -> Reply:
-        """The outcome as plain data."""
+    def reply(self, *, is_recorded: bool = False, is_digested: bool = False) -> Reply:
+        """The outcome as plain data; record and digest cost as much as the text: on request."""
         line, column = self.source.position(self.span.start)
-        record = self.record()
-        is_error = self.status == "error"
-        show = self.settings.show
+        terms: tuple[str, ...] = ()
+        kind, shown, remark = "error", "", ""
+        if self.status != "error":
+            kind = kind_of(self.raw)
+            terms = term_lines(self.raw, self.settings.show)
+            shown = " ".join(terms) or self.text
+            remark = note(self.raw, self.settings.n)
         return Reply(
             self.sentence, line, column, self.source.slice(self.span).strip(), self.status,
-            record["kind"], self.tag, self.settings.n, "" if is_error else self.text,
-            () if is_error else term_lines(self.raw, show), self.messages(), record,
-            self.seconds, isinstance(self.raw, Text) and self.raw.kind == "quit")
+            kind, self.tag, self.settings.n, shown, terms, self.messages(),
+            self.record() if is_recorded else {}, self.seconds,
+            isinstance(self.raw, Text) and self.raw.kind == "quit", remark,
+            digest(self.raw) if is_digested and self.status != "error" else "")
 
 
 @dataclass
 class Session:
     """A ring, its settings, names and results, and how they change.
 
-    >>> Session(n=3).run("x_1 E_201").text
-    'E_(3,0,1) + (1 - t)/(1 - q t^2) E_(2,1,1)'
+    >>> Session(n=2).run("x_1 E_(0,1)").text
+    'E_(1,1)'
     """
 
     n: int | None = None
@@ -155,6 +149,8 @@ class Session:
     def __post_init__(self) -> None:
         sys.setrecursionlimit(max(sys.getrecursionlimit(), RECURSION_LIMIT))
         if self.n is not None:
+            if not (isinstance(self.n, int) and 1 <= self.n <= LARGEST_N):
+                raise ValueError(f"n lies between 1 and {LARGEST_N}; this is {self.n!r}")
             self.context = replace(self.context, settings=Settings(n=self.n))
 
     def run(self, text: str, name: str = "<input>") -> Outcome:
@@ -178,12 +174,27 @@ class Session:
             if self.has_quit:
                 return
 
+    def guarded(self, sentence: syntax.Sentence, action: Callable[[], Step]) -> Step:
+        """Carry a sentence out; the evaluator process does so at a checkpoint."""
+        return action()
+
+    def state(self) -> State:
+        """The plain summary that prompts and completers need."""
+        context = self.context
+        names = {
+            name: (f"a function of {', '.join(value.parameters)}"
+                   if isinstance(value, Function) else kind_name(value))
+            for name, value in context.names.items()}
+        return State(context.settings.n, context.settings.basis, context.parameters, names,
+                     self.last_tag)
+
     def names(self) -> tuple[str, ...]:
         """The session's own names, for completion."""
         return (*self.context.names, *self.context.parameters)
 
     def _run_chunk(self, source: Source, chunk: Chunk) -> Outcome:
         self.n_sentences += 1
+        wrong: Diagnostic | None = None
         started = time.perf_counter()
         if chunk.sentence is None:
             return self._outcome(source, chunk.span, "error", None, None, chunk.diagnostics, 0.0)
@@ -196,7 +207,15 @@ class Session:
         except (RecursionError, MemoryError):
             wrong = failure("too-large", chunk.span,
                             "this sentence needs more memory than there is").diagnostic
-            return self._outcome(source, chunk.span, "error", None, None, (wrong,), 0.0)
+        except Exception as error:
+            # a fault of the program must not end the session; its name is what a report needs
+            wrong = failure(
+                "internal-error", chunk.span,
+                "the program failed here, and the fault is not yours; please report "
+                f"{type(error).__name__}: {str(error)[:200]}").diagnostic
+        if wrong is not None:
+            seconds = time.perf_counter() - started
+            return self._outcome(source, chunk.span, "error", None, None, (wrong,), seconds)
         tag = self._keep(step)
         seconds = time.perf_counter() - started
         status = "failed" if step.has_failed else "ok"
@@ -212,8 +231,10 @@ class Session:
             return None
 
         surface = Surface(source, self._use, self._read, self._write)
-        with budget.using(budget.Budget(reason, limits.terms)):
-            return carry_out(sentence, self.context, surface)
+        by = replace(means.current(), folder=self.folder)
+        with budget.using(budget.Budget(reason, limits.terms)), means.using(by):
+            return self.guarded(
+                sentence, lambda: carry_out(sentence, self.context, surface))
 
     def _keep(self, step: Step) -> int | None:
         self.context = step.context
@@ -246,27 +267,37 @@ class Session:
             raise failure("circular-use", node.place, f"{path} uses itself")
         if place in self._used:
             return self.context
-        kept = (self.context, self.last_tag, self.n_sentences, set(self._used), self.folder)
+        context, last_tag, used = self.context, self.last_tag, set(self._used)
+        n_sentences = self.n_sentences
         self._using.append(place)
-        self.folder = replace(self.folder, root=self.folder.root)
+        is_whole = False
         try:
             for outcome in self.run_all(Source(content, path)):
                 if outcome.status != "ok":
                     what = (outcome.diagnostics[0].message if outcome.diagnostics
                             else "a claim does not hold")
-                    self.context, self.last_tag, self.n_sentences, self._used, self.folder = kept
-                    raise failure("unreadable-file", node.place,
-                                  f"{path}, line {outcome.line}: {what}")
+                    codes = {found.code for found in outcome.diagnostics}
+                    raise failure(
+                        "circular-use" if "circular-use" in codes else "unreadable-file",
+                        node.place, f"{path}, line {outcome.fault_line}: {what}")
+            is_whole = True
+            self._used.add(place)
+            return self.context
         finally:
             self._using.pop()
             self.has_quit = False
-        self._used.add(place)
-        self.n_sentences = kept[2]
-        return self.context
+            self.n_sentences = n_sentences
+            if not is_whole:
+                self.context, self.last_tag, self._used = context, last_tag, used
 
     def _read(self, path: str, node: syntax.Node) -> Any:
-        raise failure("not-available-yet", node.place,
-                      "`read` is part of the language, but nothing here reads values yet")
+        try:
+            _, text = self.folder.read(path)
+            return value_from_json(text, self.context.parameters)
+        except FileRefused as error:
+            raise failure(error.code, node.place, str(error)) from error
+        except NoValue as error:
+            raise failure("unreadable-file", node.place, f"{path}: {error}") from error
 
     def _write(self, path: str, content: str, node: syntax.Node) -> str:
         try:

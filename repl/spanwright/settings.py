@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
-from spanwright.kernel.coefficients import Scalar
+if TYPE_CHECKING:
+    from spanwright.kernel.coefficients import Scalar
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,13 +32,15 @@ class Settings:
         return replace(self, **changes)
 
     def images(self) -> dict[str, Scalar]:
-        """The values that parameters are fixed at."""
-        return {name: value for name, value in (("q", self.q), ("t", self.t))
-                if value is not None}
+        """The values that parameters are fixed at; one that contains the other is resolved."""
+        fixed = {name: value for name, value in (("q", self.q), ("t", self.t))
+                 if value is not None}
+        return {name: value.substitute({k: v for k, v in fixed.items() if k != name})
+                for name, value in fixed.items()}
 
 
 WORDS: dict[str, tuple[str, ...]] = {
-    "convention": ("standard",),
+    "convention": ("standard", "reversed"),
     "hecke": ("plain", "balanced"),
     "show": ("short", "factored", "expanded"),
     "certainty": ("exact", "random"),

@@ -10,10 +10,11 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Family
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 BASE_RING = ParameterRing.get()
 

@@ -21,6 +21,7 @@ from spanwright_grammar import (
     print_tree,
     tokens,
 )
+from spanwright_grammar.lexing import KEYWORDS
 from spanwright_grammar.syntax import (
     Expression,
     ExpressionSentence,
@@ -123,12 +124,13 @@ def test_a_loose_operand_is_printed_in_parentheses() -> None:
 
 # --- Nothing but `Parsed` comes out --------------------------------------------------------------
 
-WORDS = (
-    "fix let be expand in claim for where find tabulate derive draw show as write to use recall "
-    "forget remark help quit guess end at and or not read parameter parameters a sum_ prod_ sum "
-    'x_1 E_ E mu \\mu μ q 1 17 .. . -> = == != <= * · / ^ + - ( ) { } [ ] | , ; : _ " # #= @ ² '
-    "\n \r\n \\ \u0301 \x00 ∑_ ∂_1 \ud800 ' ' sum_( E_( f( |"
-).split(" ")
+WORDS = [
+    *KEYWORDS,
+    *("x_1", "E_", "E", "mu", "\\mu", "μ", "q", "a", "1", "17", "sum", "sum_", "prod_", "sum_("),
+    *("E_(", "f(", "..", ".", "->", "=", "==", "!=", "<=", "*", "·", "/", "^", "+", "-", "∑_"),
+    *("(", ")", "{", "}", "[", "]", "|", ",", ";", ":", "_", '"', "#", "#=", "∂_1"),
+    *("@", "²", "\n", "\r\n", "\\", "\u0301", "\x00", "\ud800", "'", " "),
+]
 
 
 def _check(text: str) -> None:

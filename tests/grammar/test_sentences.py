@@ -1,4 +1,4 @@
-"""Sentences as text and as trees, how a text is split into them, and what is wrong with bad ones."""
+"""Sentences as text and as trees, how a text is split into them, and messages for bad ones."""
 
 from __future__ import annotations
 

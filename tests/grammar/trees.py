@@ -227,7 +227,6 @@ class _Drawing:
     def simple_sentence(self) -> Sentence:
         draw = self.draw
         settings = st.sampled_from(["n", "q", "show", "basis"])
-        topics = st.sampled_from([None, "E", "bad input", "( for"])
         sentence: Sentence = self.choice(
             lambda: s.ExpressionSentence(self.expression()),
             lambda: s.Fix(draw(settings), self.expression()),
@@ -249,14 +248,15 @@ class _Drawing:
             lambda: s.Recall(self.choice(lambda: None, self.expression)),
             lambda: s.Forget(self.items(1, 2)),
             lambda: s.Remark(draw(TEXTS)),
-            lambda: s.Help(draw(topics)),
             s.Quit,
         )
         return sentence
 
     def line(self) -> Sentence:
+        topics = st.sampled_from([None, "E", "bad input", "( for"])
         sentence: Sentence = self.choice(
             self.simple_sentence,
+            lambda: s.Help(self.draw(topics)),
             lambda: s.For(self.bindings(), self.condition(), (self.simple_sentence(),), False),
         )
         return sentence

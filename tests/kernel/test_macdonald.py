@@ -7,7 +7,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from effort import effort
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families import macdonald
 from spanwright.kernel.families import nonsymmetric_macdonald as nonsymmetric
@@ -20,6 +20,7 @@ from spanwright.kernel.families.qt_kostka import (
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.indices import conjugate, decreasing, padded, partitions
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 ZERO, ONE = Scalar.zero(RING), Scalar.one(RING)
@@ -114,7 +115,7 @@ def test_dictionary_of_limits(index: tuple[int, ...], n: int) -> None:
     assert f.substitute_parameters({"t": ZERO}) == whittaker
     increasing = tuple(reversed(padded(index, n)))
     assert nonsymmetric.to_monomials(increasing).substitute_parameters({"t": ZERO}) == whittaker
-    # coefficients in N[q] (Macdonald 1995, VI.8, (8.12) and duality)
+    # in N[q], as Kostka-Foulkes polynomials are positive (Lascoux and Schützenberger 1978)
     assert all(c > 0 for p in whittaker.terms.values() for c in p.coeffs())
 
 

@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 
 from effort import effort
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import OutsideDomain, OverBudget
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import linear
@@ -30,6 +30,7 @@ from spanwright.kernel.families.transitions import (
 )
 from spanwright.kernel.indices import partitions, permutations, swapped
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 CLASSICAL = "mehps"
@@ -50,7 +51,7 @@ def canonical_indices(name: str, size: int, n: int) -> list[tuple[int, ...]]:
 
 scalars = st.builds(
     lambda top, bottom, a, b: Scalar.number(RING, top, bottom) * Scalar.monomial_of(RING, (a, b))
-    * RING.one_minus((1, 1)).inverse(),
+    * Scalar.one_minus(RING, (1, 1)).inverse(),
     st.integers(-5, 5).filter(bool), st.integers(1, 4), st.integers(-1, 2), st.integers(-1, 2))
 
 

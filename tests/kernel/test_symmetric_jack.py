@@ -43,7 +43,8 @@ def test_jack_is_an_eigenfunction(index: tuple[int, ...], n: int) -> None:
         image = image + (derivative(once, i) - once).scaled(half)
         for j in range(i + 1, n):
             top = x[i] * once - x[j] * derivative(f, j)
-            image = image + top.divided_exactly(x[i] - x[j])
+            if top:
+                image = image + top.divided_exactly(x[i] - x[j])
     eigenvalue = half * sum(part * (part - 1) for part in index) + sum(
         (n - i) * part for i, part in enumerate(index, 1))
     assert image == f.scaled(eigenvalue)

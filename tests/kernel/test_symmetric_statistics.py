@@ -7,7 +7,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from effort import effort
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families.diagrams import (
     Box,
@@ -33,6 +33,7 @@ from spanwright.kernel.families.statistics import (
 )
 from spanwright.kernel.indices import compositions, conjugate, partitions, ranks
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 ONE = Scalar.one(RING)

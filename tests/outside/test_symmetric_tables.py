@@ -9,7 +9,7 @@ from typing import Any
 import pytest
 import sympy
 
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.families.base import linear
 from spanwright.kernel.families.jack import integral_jack
 from spanwright.kernel.families.kostka import kostka
@@ -19,6 +19,7 @@ from spanwright.kernel.families.registry import family
 from spanwright.kernel.families.transitions import character, transition
 from spanwright.kernel.indices import conjugate, padded, partitions
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 q, t = Scalar.parameter(RING, "q"), Scalar.parameter(RING, "t")
@@ -221,8 +222,8 @@ def test_power_sums_and_complete_ones_by_sympy() -> None:
         h = as_sympy(family("h").to_monomials((k,), n))
         assert sympy.expand(h - sympy.expand(generating).coeff(z, k)) == 0
         e = as_sympy(family("e").to_monomials((k,), n))
-        coefficient_of_z = sympy.expand(sympy.prod([1 + variable * z for variable in x])).coeff(z, k)
-        assert sympy.expand(e - coefficient_of_z) == 0
+        product = sympy.expand(sympy.prod([1 + variable * z for variable in x]))
+        assert sympy.expand(e - product.coeff(z, k)) == 0
 
 
 def solved_by_sympy(index: Shape, n: int) -> dict[Shape, Any]:

@@ -15,10 +15,14 @@ from spanwright.kernel.errors import OverBudget
 
 @dataclass(frozen=True, slots=True)
 class Budget:
-    """Limits for one sentence: `is_spent` says why work must stop, `max_terms` bounds a result."""
+    """Limits for one sentence: `is_spent` says why work must stop, `max_terms` bounds a result.
+
+    `report` is told what has been reached, as often as long work looks here.
+    """
 
     is_spent: Callable[[], str | None] = lambda: None
     max_terms: int = 2_000_000
+    report: Callable[[str], None] | None = None
 
     def check(self) -> None:
         """Raise OverBudget when the time is over or somebody cancelled."""
@@ -33,6 +37,8 @@ class Budget:
                 f"{what} would have about {n_terms:,} terms, the limit is {self.max_terms:,}",
                 code="too-many-terms",
             )
+        if self.report is not None:
+            self.report(f"{what.replace('this ', 'a ', 1)} of about {n_terms:,} terms")
         self.check()
 
 

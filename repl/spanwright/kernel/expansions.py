@@ -5,10 +5,11 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import Mixed
 from spanwright.kernel.families.base import Family, Index
 from spanwright.kernel.laurent import LaurentPolynomial, total_polynomial
+from spanwright.kernel.parameters import ParameterRing
 
 
 class Expansion:

@@ -69,6 +69,8 @@ def macdonald_order(mu: Composition) -> tuple[object, ...]:
 
 def compositions(size: int, n: int) -> Iterator[Composition]:
     """Weak compositions of `size` into n parts, lexicographically from (0, ..., size)."""
+    if size < 0:
+        return
     if n == 0:
         if size == 0:
             yield ()

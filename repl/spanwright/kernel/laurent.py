@@ -8,7 +8,6 @@ denominator divides them all, and the term with the largest exponent has a posit
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Mapping
-from fractions import Fraction
 from math import comb
 from typing import Any
 
@@ -16,16 +15,12 @@ from flint import Ordering, fmpq, fmpz, fmpz_mpoly, fmpz_mpoly_ctx
 from flint.utils.flint_exceptions import DomainError
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import (
-    Exponents,
-    Factor,
-    ModularPoint,
-    ParameterRing,
-    Scalar,
-    Substitution,
-    monomials,
-)
+from spanwright.kernel.coefficients import Scalar, common_denominator, polynomial_of, total
 from spanwright.kernel.errors import DivisionByZero, Mixed, NotAUnit, Pole
+from spanwright.kernel.factors import Factor
+from spanwright.kernel.parameters import Exponents, ParameterRing, monomials
+from spanwright.kernel.residues import ModularPoint
+from spanwright.kernel.substitution import Substitution
 
 Terms = dict[Exponents, fmpz_mpoly]
 
@@ -57,6 +52,7 @@ class LaurentPolynomial:
         """The canonical polynomial scale * sum terms; the scale may be any scalar of `ring`."""
         if not terms or scale.is_zero:
             return LaurentPolynomial(n, ring, {}, Scalar.one(ring))
+        scale = scale.lift(ring)  # a product may have settled where t^(1/2) does not occur
         top = scale.expanded_rest()
         if not top.is_one():
             terms = {e: c * top for e, c in terms.items()}
@@ -65,7 +61,7 @@ class LaurentPolynomial:
         content = fmpz(0)
         low: Exponents | None = None
         for c in terms.values():
-            content = content.gcd(c.content())
+            content = content.gcd(c.content())  # type: ignore[attr-defined]
             if low is None or any(low):
                 own = tuple(map(int, c.term_content().monomial(0)))
                 low = own if low is None else tuple(map(min, low, own))
@@ -98,7 +94,7 @@ class LaurentPolynomial:
         terms = {}
         for e, c in lifted.items():
             cleared = c * inverse
-            terms[e] = polynomial_of(cleared)
+            terms[e] = polynomial_of(cleared.lift(ring))
         return LaurentPolynomial.reduced(n, ring, terms, scale)
 
     @staticmethod
@@ -308,6 +304,8 @@ class LaurentPolynomial:
         a, b = self._aligned(other)
         if len(b.terms) == 1:
             return a * b.inverse()
+        if not a.terms:
+            return a
         packed_a, low_a = packed(a.ring, a.n, a.terms)
         packed_b, low_b = packed(b.ring, b.n, b.terms)
         try:
@@ -361,8 +359,6 @@ class LaurentPolynomial:
                         powers[j, power] = at**power
                     value = value * powers[j, power]
             collected.setdefault(tuple(rest), []).append(value)
-        from spanwright.kernel.coefficients import total
-
         return LaurentPolynomial.of_scalars(
             self.n, self.ring, {e: total(vs, self.ring) for e, vs in collected.items()})
 
@@ -376,28 +372,6 @@ class LaurentPolynomial:
                     term = term * pow(xs[j], power, point.prime) % point.prime
             value += term
         return value * point.value(self.scale) % point.prime
-
-
-def polynomial_of(value: Scalar) -> fmpz_mpoly:
-    """A scalar without denominator as a kernel polynomial."""
-    rest = value.expanded_rest() * value.content.p
-    if any(value.monomial):
-        rest = rest * value.ring.monomial(value.monomial)
-    return rest
-
-
-def common_denominator(ring: ParameterRing, scalars: Iterable[Scalar]) -> Scalar:
-    """1 over the least common denominator, Laurent monomials included."""
-    least: dict[Factor, int] = {}
-    denominator = fmpz(1)
-    low: Exponents | None = None
-    for s in scalars:
-        denominator = denominator.lcm(s.content.q)
-        low = s.monomial if low is None else tuple(map(min, low, s.monomial))
-        for f, e in s.factors.items():
-            if e < least.get(f, 0):
-                least[f] = e
-    return Scalar(ring, fmpq(1, denominator), low or ring.nil, ring.one, least)
 
 
 def _divided_by_common(terms: Terms, factors: dict[Factor, int]) -> Terms:
@@ -432,7 +406,7 @@ def total_polynomial(polynomials: Iterable[LaurentPolynomial]) -> LaurentPolynom
     inverse = scale.inverse()
     terms: Terms = {}
     for p in present:
-        factor = polynomial_of(p.scale * inverse)
+        factor = polynomial_of((p.scale * inverse).lift(ring))
         is_unit = factor.is_one()
         for e, c in p.terms.items():
             added = c if is_unit else c * factor
@@ -493,8 +467,3 @@ def unpacked(ring: ParameterRing, n: int, polynomial: fmpz_mpoly, low: Exponents
         head = tuple(map(int.__add__, e[:n], low))
         rows.setdefault(head, {})[e[n:]] = value
     return {e: ring.context.from_dict(row) for e, row in rows.items()}
-
-
-def rational(value: Fraction, ring: ParameterRing) -> Scalar:
-    """A rational number as a scalar."""
-    return Scalar.number(ring, value.numerator, value.denominator)

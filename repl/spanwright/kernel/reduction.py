@@ -7,19 +7,25 @@ products that stay inside one family stay expansions in it; what fits nowhere be
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import Any
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
-from spanwright.kernel.errors import KernelError, NotAUnit, OutsideDomain
+from spanwright.kernel.coefficients import Scalar, total
+from spanwright.kernel.errors import NotAUnit, OutsideDomain, Pole
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Coefficients, Family, Index, linear
-from spanwright.kernel.families.registry import family
+from spanwright.kernel.indices import is_partition, trimmed
 from spanwright.kernel.laurent import LaurentPolynomial, total_polynomial
+from spanwright.kernel.parameters import ParameterRing
 
 Element = Scalar | LaurentPolynomial | Expansion
 
-# Measured on products E_mu E_nu (`scripts/bench`): one step of the closed rule costs about as
-# much as this many steps of the triangular route.
+# Measured on products E_mu E_nu (`scripts/bench`): N monomials are re-expanded in about 25 N^2
+# microseconds, and the closed rule takes 10 N 2^(n-1) for each step x_j.
+STEPS_A_TERM = 2.5
+# The monomials of E_mu E_nu are counted when there can be no more than these, else estimated.
+COUNTED_MONOMIALS = 300
+# In other families, one step of the closed rule against one of the triangular route.
 CLOSED_RULE_COST = 0.35
 
 
@@ -41,7 +47,7 @@ def expand(value: Element, target: Family, n: int) -> Expansion:
         if direct is not None:
             return direct
     polynomial = to_polynomial(value, n)
-    if target.name == "E" and isinstance(value, LaurentPolynomial | Scalar):
+    if target.name.startswith("E") and isinstance(value, LaurentPolynomial | Scalar):
         return _polynomial_in_E(polynomial, target)
     return Expansion(target, polynomial.n, target.from_monomials(polynomial))
 
@@ -54,7 +60,14 @@ def _converted(value: Expansion, target: Family) -> Expansion | None:
         if row is None:
             return None
         rows[index] = row
-    return Expansion(target, value.n, linear(value.terms, rows.__getitem__))
+    return _sized(target, value.n, linear(value.terms, rows.__getitem__))
+
+
+def _sized(target: Family, n: int, terms: Coefficients) -> Expansion:
+    """The expansion in as many variables as its elements need."""
+    if target.grows:
+        n = max([n, *(target.n_variables(index) for index in terms)])
+    return Expansion(target, n, terms)
 
 
 def _polynomial_in_E(polynomial: LaurentPolynomial, target: Family) -> Expansion:
@@ -154,8 +167,9 @@ def _by_element_rule(a: Expansion, b: Expansion) -> Expansion | None:
                 continue
             break
         else:
-            return Expansion(
-                right.family, right.n, {i: total(cs) for i, cs in collected.items()})
+            return _sized(
+                right.family, max(left.n, right.n),
+                {i: total(cs) for i, cs in collected.items()})
     return None
 
 
@@ -177,6 +191,24 @@ def multiply_polynomial(factor: LaurentPolynomial, b: Expansion) -> Element:
         return product
 
 
+def composed(f: LaurentPolynomial, images: dict[int, LaurentPolynomial]) -> LaurentPolynomial:
+    """f with some x_j (j from 1) replaced by polynomials; negative powers need monomials."""
+    powers: dict[tuple[int, int], LaurentPolynomial] = {}
+    summands = []
+    for exponents, c in f.items():
+        budget.current().check()
+        kept = tuple(0 if j in images else e for j, e in enumerate(exponents, 1))
+        product = LaurentPolynomial.monomial(f.n, kept, c)
+        for j, image in images.items():
+            e = exponents[j - 1]
+            if e:
+                if (j, e) not in powers:
+                    powers[j, e] = image**e
+                product = product * powers[j, e]
+        summands.append(product)
+    return total_polynomial(summands) if summands else f
+
+
 def extended_polynomial(f: LaurentPolynomial, n: int) -> LaurentPolynomial:
     """The same polynomial in n variables, n at least its own."""
     if f.n >= n:
@@ -192,7 +224,8 @@ def _has_generator_rule(b: Expansion) -> bool:
 
 def _prefers_closed_rule(factor: LaurentPolynomial, b: Expansion) -> bool:
     """Compare estimated costs of the two routes."""
-    if any(e < 0 for exponents in factor.terms for e in exponents) and b.family.name != "E":
+    is_macdonald = b.family.sign == "E"
+    if not is_macdonald and any(e < 0 for exponents in factor.terms for e in exponents):
         return False
     if not _has_generator_rule(b):
         return False
@@ -201,13 +234,26 @@ def _prefers_closed_rule(factor: LaurentPolynomial, b: Expansion) -> bool:
         exponents[: k + 1]
         for exponents in factor.terms for k in range(n)}
     n_steps = sum(abs(p[-1]) for p in prefixes)
+    n_subsets: int = 2 ** (n - 1)
     degree = max(sum(map(abs, e)) for e in factor.terms)
+    if len(factor) == 1 and degree == 1:
+        return True
     top = max(sum(map(abs, i)) for i in b.terms) + degree
     size = _n_monomials(top, n)
-    middle = min(size, len(b) * 2 ** ((n - 1) * max(degree // 2, 1) // 2 + 1))
-    closed = n_steps * middle * 2 ** (n - 1) * CLOSED_RULE_COST
-    triangular = (size * 0.6) ** 2 / 2
-    return closed <= triangular or (len(factor) == 1 and degree == 1)
+    if is_macdonald:
+        n_terms = size * 0.6
+        if len(factor) > 2 and size <= COUNTED_MONOMIALS:
+            n_terms = _n_product_terms(factor, b.to_monomials())
+        return n_steps * n_subsets <= STEPS_A_TERM * n_terms
+    middle: int = min(size, len(b) * 2 ** ((n - 1) * max(degree // 2, 1) // 2 + 1))
+    closed = n_steps * middle * n_subsets * CLOSED_RULE_COST
+    triangular: float = (size * 0.6) ** 2 / 2
+    return closed <= triangular
+
+
+def _n_product_terms(a: LaurentPolynomial, b: LaurentPolynomial) -> int:
+    """How many exponents a product has, cancellation aside."""
+    return len({tuple(map(int.__add__, e, f)) for e in a.terms for f in b.terms})
 
 
 def _n_monomials(degree: int, n: int) -> int:
@@ -272,8 +318,7 @@ def apply_generator(b: Expansion, j: int, power: int) -> Expansion:
 
     terms = linear(b.terms, rule)
     budget.current().check_terms(len(terms), "this product")
-    n = max((b.family.n_variables(i) for i in terms), default=b.n) if b.family.grows else b.n
-    return Expansion(b.family, max(n, b.n), terms)
+    return _sized(b.family, b.n, terms)
 
 
 def power(value: Element, exponent: int, n: int) -> Element:
@@ -318,19 +363,49 @@ def substitute(value: Element, images: dict[str, Scalar]) -> Element:
     return value.to_monomials().substitute_parameters(images)
 
 
-_FAMILY_PARAMETERS = {"E": {"q", "t"}, "P": {"q", "t"}, "J": {"q", "t"}, "G": {"beta"}}
+_FAMILY_PARAMETERS = {
+    "E": {"q", "t"}, "E (reversed)": {"q", "t"}, "P": {"q", "t"}, "J": {"q", "t"},
+    "G": {"beta"}}
+
+
+def rewritten_element(target: Family, index: Index, n: int) -> Expansion | None:
+    """A symmetric element whose index is not canonical for n: 0, or rewritten; None else.
+
+    s and m with more parts than variables and e_k with k > n vanish, h_k and p_k are sums.
+    """
+    rewrite = getattr(target, "canonical", None)
+    if rewrite is None or not is_partition(index):
+        return None
+    try:
+        target.check_index(index, n)
+    except OutsideDomain as error:
+        if error.code not in ("too-many-parts", "too-large-part"):
+            return None
+        return Expansion(target, n, rewrite(trimmed(index), n))
+    return None
+
+
+def place_of_pole(
+    value: Element, images: dict[str, Scalar], n: int
+) -> tuple[str, int] | None:
+    """The first coefficient with a pole, as `E_(0,2)` or `x_1 x_2`, and the order of the pole."""
+    if isinstance(value, Expansion) and depends_on_parameters(value.family, images):
+        value = value.to_monomials()
+    if isinstance(value, Scalar):
+        return None
+    items: Any = value.items()
+    for index, c in items:
+        try:
+            c.substitute(images)
+        except Pole as pole:
+            shown = ",".join(map(str, index))
+            name = value.family.name if isinstance(value, Expansion) else None
+            return (f"{name}_({shown})" if name else f"x^({shown})", pole.order)
+    return None
 
 
 def depends_on_parameters(target: Family, images: dict[str, Scalar]) -> bool:
     """Whether the elements of a family contain one of the parameters."""
+    if target.name == "double Schubert":
+        return any(name.startswith("y_") for name in images)
     return bool(_FAMILY_PARAMETERS.get(target.name, set()) & set(images))
-
-
-def monomials_family_error(value: Element) -> KernelError:
-    """What to say when a value is asked for its place in a family it has none in."""
-    return OutsideDomain("a scalar has no index")
-
-
-def named(name: str) -> Family:
-    """A family by its symbol."""
-    return family(name)

@@ -10,6 +10,7 @@ from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import PLAIN, scalar_text
 from spanwright.rendering.text import number_text, text
+from spanwright.tally import Tally, tally_data
 from spanwright.values import (
     Definition,
     FamilyMark,
@@ -28,6 +29,24 @@ Data = dict[str, Any]
 def plain_scalar(value: Scalar | int | Fraction) -> str:
     """A scalar as ASCII with explicit products, `*` and `**`."""
     return scalar_text(value, PLAIN) if isinstance(value, Scalar) else number_text(value)
+
+
+def kind_of(value: Any) -> str:
+    """The kind that `data` gives, without rendering the value."""
+    if is_number(value) or isinstance(value, Scalar):
+        return "scalar"
+    if isinstance(value, LaurentPolynomial | Expansion):
+        return "expansion"
+    if isinstance(value, Truth):
+        return "truth"
+    if isinstance(value, tuple):
+        return "index"
+    if isinstance(value, ListValue | IndexSet):
+        return "list"
+    if is_operator(value):
+        return "operator"
+    named = {Tally: "tally", Table: "table", Definition: "definition", Setting: "setting"}
+    return named.get(type(value), "text")
 
 
 def data(value: Any) -> Data:
@@ -54,6 +73,8 @@ def data(value: Any) -> Data:
         return {"kind": "list", "items": [data(v) for v in value.items]}
     if isinstance(value, IndexSet):
         return {"kind": "list", "items": [data(v) for v in value]}
+    if isinstance(value, Tally):
+        return tally_data(value)
     if isinstance(value, Table):
         return {"kind": "table", "columns": list(value.columns), "rows": [
             [v if isinstance(v, str) else data(v) for v in row] for row in value.rows],

@@ -1,7 +1,4 @@
-"""Long results cut into terms and lines of a given width; every line break pastes back.
-
-A line ends with the sign of the term that follows, so that the language reads on.
-"""
+"""A result taken apart for those who show it: its signed terms, and where it lives."""
 
 from __future__ import annotations
 
@@ -11,14 +8,22 @@ from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import TEXT
 from spanwright.rendering.text import term_pieces
+from spanwright.values import is_operator
 
 
 def term_lines(value: Any, show: str = "short") -> tuple[str, ...]:
-    """The terms of a polynomial or expansion, each with its sign; nothing for other values."""
-    if not isinstance(value, LaurentPolynomial | Expansion):
+    """The terms of a sum, each with its sign; nothing for other values."""
+    if isinstance(value, LaurentPolynomial | Expansion):
+        pieces = term_pieces(value, TEXT, show)
+    elif is_operator(value):
+        from spanwright.rendering.operators import operator_pieces
+
+        word = value.to_operator() if hasattr(value, "to_operator") else value
+        pieces = operator_pieces(word, TEXT, show)
+    else:
         return ()
     rows = []
-    for place, (negative, coefficient, element) in enumerate(term_pieces(value, TEXT, show)):
+    for place, (negative, coefficient, element) in enumerate(pieces):
         body = " ".join(part for part in (coefficient, element) if part)
         if place == 0:
             rows.append(f"-{body}" if negative else body)
@@ -27,16 +32,11 @@ def term_lines(value: Any, show: str = "short") -> tuple[str, ...]:
     return tuple(rows)
 
 
-def wrapped(terms: tuple[str, ...] | list[str], width: int) -> list[str]:
-    """The terms in lines of at most `width` columns where that can be: a term is never cut."""
-    lines: list[str] = []
-    current = ""
-    for term in terms:
-        if not current:
-            current = term
-        elif len(current) + 1 + len(term) <= width - 2:
-            current += f" {term}"
-        else:
-            lines.append(f"{current} {term[0]}")
-            current = f"  {term[2:]}"
-    return [*lines, current] if current else lines
+def note(value: Any, n: int | None) -> str:
+    """Where a result lives, when the ring in force does not say it: an algebra, more variables."""
+    if is_operator(value) and hasattr(value, "algebra"):
+        letters = ", ".join(value.letters)
+        return f"{value.algebra}, letters {letters}" if letters else "scalar"
+    if isinstance(value, LaurentPolynomial | Expansion) and n is not None and value.n > n:
+        return f"needs {value.n} variables"
+    return ""

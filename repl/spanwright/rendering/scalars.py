@@ -5,19 +5,28 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 
-from spanwright.kernel.coefficients import PolynomialForm, Scalar, decimal
+from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.decimals import decimal
+from spanwright.kernel.parameters import ParameterRing
+from spanwright.kernel.product_form import PolynomialForm, powers_of_word
 
-Powers = tuple[tuple[str, Fraction], ...]
+# Each style remembers the texts of this many terms, then starts afresh.
+REMEMBERED_TERMS = 100_000
 
 # names that sympy.sympify reads as something else than a symbol
-SYMPY_TAKEN = frozenset(
-    "beta gamma zeta lambda pi E I N O Q S C Chi Si Ci Ei Lambda elliptic_e rf ff re im sign "
-    "det trace diag test plot var Symbol symbols oo nan zoo".split())
+SYMPY_TAKEN = frozenset((
+    "beta", "gamma", "zeta", "lambda", "pi", "E", "I", "N", "O", "Q", "S", "C", "Chi", "Si",
+    "Ci", "Ei", "Lambda", "elliptic_e", "rf", "ff", "re", "im", "sign", "det", "trace", "diag",
+    "test", "plot", "var", "Symbol", "symbols", "oo", "nan", "zoo",
+))
 
-GREEK = frozenset(
-    "alpha beta gamma delta epsilon zeta eta theta iota kappa lambda mu nu xi pi rho sigma tau "
-    "upsilon phi chi psi omega".split())
+GREEK = frozenset((
+    "alpha", "beta", "gamma", "delta", "epsilon", "zeta", "eta", "theta", "iota", "kappa",
+    "lambda", "mu", "nu", "xi", "pi", "rho", "sigma", "tau", "upsilon", "phi", "chi", "psi",
+    "omega",
+))
 
 
 @dataclass(frozen=True)
@@ -36,7 +45,7 @@ class Style:
         """A power of an atom."""
         if exponent == 1:
             return base
-        shown = str(exponent) if Fraction(exponent).denominator == 1 else f"({exponent})"
+        shown = str(exponent) if exponent.denominator == 1 else f"({exponent})"
         return f"{base}{self.power}{shown}"
 
     def quotient(self, numerator: str, denominators: Sequence[str]) -> str:
@@ -51,19 +60,37 @@ class Style:
 
     def polynomial(self, form: PolynomialForm) -> str:
         """A polynomial in the parameters, constant term first."""
-        if len(form) > 6:
-            quick = form.joined(self.times, self.power)
-            if quick is not None:
-                return quick
-        pieces: list[str] = []
-        for coefficient, powers in form.terms():
-            monomial = [self.raised(self.name(n), e) for n, e in powers]
-            if abs(coefficient) != 1 or not monomial:
-                monomial.insert(0, self.integer(abs(coefficient)))
-            sign = "-" if coefficient < 0 else "+"
-            pieces.append(f"{sign} {self.times.join(monomial)}")
-        text = " ".join(pieces)
+        words = form.words()
+        words[1::2] = map(_terms(self, form.ring).__getitem__, words[1::2])
+        text = " ".join(words)
         return text[2:] if text[0] == "+" else "-" + text[2:]
+
+
+class _Terms(dict[str, str]):
+    """Terms as flint writes them to terms of one style; the large polynomials of a result share
+    most of them."""
+
+    def __init__(self, style: Style, ring: ParameterRing) -> None:
+        self._style = style
+        self._ring = ring
+
+    def __missing__(self, word: str) -> str:
+        style = self._style
+        digits, _, monomial = word.partition("*")
+        if not digits.isdecimal():
+            shown = style.times.join(
+                style.raised(style.name(n), e) for n, e in powers_of_word(self._ring, word))
+        else:
+            shown = f"{digits}{style.times}{self[monomial]}" if monomial else digits
+        if len(self) >= REMEMBERED_TERMS:
+            self.clear()
+        self[word] = shown
+        return shown
+
+
+@lru_cache(maxsize=16)
+def _terms(style: Style, ring: ParameterRing) -> _Terms:
+    return _Terms(style, ring)
 
 
 class PlainStyle(Style):
@@ -92,20 +119,19 @@ class TexStyle(Style):
             numerator = numerator[1:-1]
         return f"\\frac{{{numerator}}}{{{below}}}"
 
-    def polynomial(self, form: PolynomialForm) -> str:
-        pieces: list[str] = []
-        for coefficient, powers in form.terms():
-            monomial = [self.raised(self.name(n), e) for n, e in powers]
-            if abs(coefficient) != 1 or not monomial:
-                monomial.insert(0, self.integer(abs(coefficient)))
-            pieces.append(f"{'-' if coefficient < 0 else '+'} {' '.join(monomial)}")
-        text = " ".join(pieces)
-        return text[2:] if text[0] == "+" else "-" + text[2:]
-
 
 TEXT = Style()
 PLAIN = PlainStyle(times="*", power="**")
 TEX = TexStyle()
+
+
+@lru_cache(maxsize=2_000)
+def _factor_texts(
+    style: Style, factors: tuple[tuple[PolynomialForm, int], ...]
+) -> tuple[str, ...]:
+    """Factors in brackets with their exponents: many coefficients share a denominator."""
+    left, right = style.brackets
+    return tuple(style.raised(f"{left}{style.polynomial(p)}{right}", e) for p, e in factors)
 
 
 def scalar_text(
@@ -127,9 +153,8 @@ def scalar_text(
     if is_bare_sum and not as_factor and not negative:
         return style.polynomial(form.numerator[0][0])
     left, right = style.brackets
-    for pieces, factors in ((top, form.numerator), (bottom, form.denominator)):
-        pieces += [
-            style.raised(f"{left}{style.polynomial(p)}{right}", e) for p, e in factors]
+    top += [style.raised(f"{left}{style.polynomial(p)}{right}", e) for p, e in form.numerator]
+    bottom += _factor_texts(style, form.denominator)
     if content != 1 or not top:
         top.insert(0, style.integer(content))
     text = style.times.join(top)

@@ -70,7 +70,7 @@ def tex_pieces(
     items: Any = value.items()
     for index, c in items:
         if isinstance(value, Expansion):
-            element = element_tex(value.family.name, value.family.show_index(index, value.n))
+            element = element_tex(value.family.sign, value.family.show_index(index, value.n))
         else:
             element = " ".join(
                 TEX.raised(f"x_{{{j}}}", e) for j, e in enumerate(index, 1) if e)
@@ -88,6 +88,8 @@ FAMILY_TEX = {
 
 def element_tex(name: str, index: tuple[int, ...]) -> str:
     """E_{(2,0,1)}; families with their customary letters."""
+    if name == "double Schubert":
+        return element_tex("S", index) + "(x;y)"
     head = FAMILY_TEX.get(name) or (f"\\{name}" if name in GREEK else name)
     return f"{head}_{{({','.join(map(str, index))})}}"
 

@@ -9,6 +9,7 @@ from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import TEXT, Style, scalar_text
+from spanwright.tally import Tally, tally_text
 from spanwright.values import (
     Definition,
     FamilyMark,
@@ -40,7 +41,10 @@ def text(value: Any, show: str = "short") -> str:
     if isinstance(value, tuple):
         return index_text(value)
     if isinstance(value, ListValue):
-        return f"list({', '.join(text(v, show) for v in value.items)})"
+        # of a statement only the verdict stands in a list: its difference is a comment
+        items = (text(v, show).partition("\n")[0].partition("   #")[0]
+                 if isinstance(v, Truth) else text(v, show) for v in value.items)
+        return f"list({', '.join(items)})"
     if isinstance(value, IndexSet):
         return value.description
     if isinstance(value, FamilyMark):
@@ -55,6 +59,8 @@ def text(value: Any, show: str = "short") -> str:
         return value.text
     if isinstance(value, Table):
         return table_text(value, show)
+    if isinstance(value, Tally):
+        return tally_text(value)
     if is_operator(value):
         from spanwright.rendering.operators import operator_text
 
@@ -83,12 +89,14 @@ def quoted(content: str) -> str:
 def truth_text(value: Truth, show: str = "short") -> str:
     """`holds`, or `fails` with the difference of the two sides."""
     if value.holds:
-        return "holds" if value.certainty == "exact" else f"holds with high probability ({value.evidence})"
-    if value.difference is None:
-        return f"fails ({value.evidence})" if value.evidence else "fails"
-    lines = ["fails", f"left - right = {text(value.difference, show)}"]
+        is_exact = value.certainty == "exact"
+        return "holds" if is_exact else f"holds   # with high probability: {value.evidence}"
+    # behind comment signs, so that all of it reads back as the truth value
+    lines = ["fails"]
+    if value.difference is not None:
+        lines.append(f"# left - right = {text(value.difference, show)}")
     if value.evidence:
-        lines.append(value.evidence)
+        lines.append(f"# {value.evidence}")
     return "\n".join(lines)
 
 
@@ -107,7 +115,7 @@ def term_pieces(
     else:
         for index, c in value.items():
             shown = value.family.show_index(index, value.n)
-            pieces.append(term_piece(c, element_text(value.family.name, shown), style, show))
+            pieces.append(term_piece(c, element_text(value.family.sign, shown), style, show))
     return pieces
 
 
@@ -130,6 +138,8 @@ def monomial_text(exponents: tuple[int, ...], style: Style = TEXT) -> str:
 
 def element_text(name: str, index: tuple[int, ...]) -> str:
     """E_(2,0,1); a single part in brackets, so that digits are never read one by one."""
+    if name == "double Schubert":
+        return f"S_({','.join(map(str, index))})(x;y)"
     return f"{name}_({','.join(map(str, index))})"
 
 

@@ -22,7 +22,15 @@ class Family(ABC):
     """A basis of (part of) a polynomial ring in x_1, ..., x_n."""
 
     name: str
-    """The symbol in the language."""
+    """What tells the family from all others; the symbol in the language unless `symbol` is."""
+
+    symbol: str = ""
+    """The symbol in the language, when another family has it for a name."""
+
+    @property
+    def sign(self) -> str:
+        """How the family is written."""
+        return self.symbol or self.name
 
     index_kind: str
     """`composition`, `partition` or `permutation`."""

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.families.base import Coefficients, Index
 from spanwright.kernel.indices import Permutation, extended, reduced_size
+from spanwright.kernel.parameters import ParameterRing
 
 
 @dataclass(frozen=True, slots=True)

@@ -12,7 +12,7 @@ from collections.abc import Iterator, Mapping
 from flint import fmpz_mpoly
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.families.base import Coefficients, Family, Index
 from spanwright.kernel.families.derivations import Derivation, Row, cover_row, integer
 from spanwright.kernel.families.packed import DIGIT, digits, from_laurent, unpack
@@ -32,6 +32,7 @@ from spanwright.kernel.families.schubert import (
 )
 from spanwright.kernel.indices import Permutation, extended, inverse, length, reduced_size
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 Double = dict[tuple[int, int], int]
 """Packed monomials in x and in y (see packed.py) to integer coefficients."""

@@ -16,7 +16,7 @@ from math import comb
 from typing import Any
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.families.base import Coefficients, Family, Index
 from spanwright.kernel.families.derivations import Derivation, Row, cover_row
 from spanwright.kernel.families.packed import (
@@ -49,6 +49,7 @@ from spanwright.kernel.indices import (
     swapped,
 )
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 Parts = list[dict[int, int]]
 """A polynomial by degree above the lowest: packed monomials (see packed.py) to integers."""

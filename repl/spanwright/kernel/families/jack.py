@@ -11,7 +11,7 @@ from collections.abc import Mapping
 from functools import lru_cache
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain, Pole
 from spanwright.kernel.families.base import Coefficients, Index
 from spanwright.kernel.families.diagrams import Partition, boxes, horizontal_strips_below
@@ -22,6 +22,7 @@ from spanwright.kernel.families.symmetric_base import (
 )
 from spanwright.kernel.indices import partitions
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get().extended(["alpha"])
 ALPHA = Scalar.parameter(RING, "alpha")

@@ -12,9 +12,10 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.families.diagrams import Partition
 from spanwright.kernel.indices import conjugate, padded, trimmed
+from spanwright.kernel.parameters import ParameterRing
 
 REFERENCE = (
     "Littlewood and Richardson, Group characters and algebra (1934); "

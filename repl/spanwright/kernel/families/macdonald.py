@@ -34,6 +34,7 @@ from spanwright.kernel.families.symmetric_base import (
 )
 from spanwright.kernel.indices import decreasing, orbit, padded, partitions, trimmed
 from spanwright.kernel.laurent import LaurentPolynomial, Terms, total_polynomial
+from spanwright.kernel.lines import divided_differences, lines
 
 BoxRatio = Callable[[Partition, int, int], Scalar]
 """b_lambda(s) for the box s = (row, column) of lambda."""
@@ -248,9 +249,9 @@ def applied_t(polynomial: LaurentPolynomial, i: int) -> LaurentPolynomial:
     t = ring.context.gen(ring.slot("t"))
     rest = 1 - t
     terms: Terms = {}
-    for line in nonsymmetric.lines(polynomial.terms, i):
+    for line in lines(polynomial.terms, i):
         found = {line.size - k: c * t for k, c in line.coefficients.items()}
-        for k, c in nonsymmetric.divided_differences(line).items():
+        for k, c in divided_differences(line).items():
             known = found.get(k)
             found[k] = c * rest if known is None else known + c * rest
         for k, c in found.items():

@@ -15,7 +15,7 @@ from functools import lru_cache
 from flint import fmpz_mpoly
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.families.base import Coefficients, Family, Index, check_composition
 from spanwright.kernel.indices import (
     Composition,
@@ -26,6 +26,8 @@ from spanwright.kernel.indices import (
     swapped,
 )
 from spanwright.kernel.laurent import LaurentPolynomial, Terms
+from spanwright.kernel.lines import Line, divided_differences, lines
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 """Q(q, t): every E_mu lives over it, whatever further parameters a session has."""
@@ -44,7 +46,7 @@ def weight_scalar(weight: Weight) -> Scalar:
 
 def one_minus(weight: Weight) -> Scalar:
     """1 - q^a t^b, as a product of irreducible factors."""
-    return RING.one_minus((weight[1], weight[0]))
+    return Scalar.one_minus(RING, (weight[1], weight[0]))
 
 
 ONE_MINUS_T = one_minus((0, 1))
@@ -195,49 +197,6 @@ def _intertwined(polynomial: LaurentPolynomial, nu: Composition, i: int) -> Laur
         _intertwine_line(line, straight, turned, own, terms)
     scale = polynomial.scale * one_minus(z).inverse() * weight_scalar((0, -shift))
     return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale)
-
-
-@dataclass(frozen=True, slots=True)
-class Line:
-    """The terms that differ in x_i^k x_(i+1)^(size-k) alone."""
-
-    before: tuple[int, ...]
-    after: tuple[int, ...]
-    size: int
-    coefficients: dict[int, fmpz_mpoly]
-
-    def exponents(self, k: int) -> tuple[int, ...]:
-        """The exponent tuple of x_i^k x_(i+1)^(size-k) on this line."""
-        return (*self.before, k, self.size - k, *self.after)
-
-
-def lines(terms: Terms, i: int) -> Iterator[Line]:
-    """A polynomial cut into lines for s_i, i from 1."""
-    found: dict[tuple[tuple[int, ...], tuple[int, ...], int], dict[int, fmpz_mpoly]] = {}
-    for e, c in terms.items():
-        key = (e[: i - 1], e[i + 1 :], e[i - 1] + e[i])
-        found.setdefault(key, {})[e[i - 1]] = c
-    for (before, after, size), coefficients in found.items():
-        yield Line(before, after, size, coefficients)
-
-
-def divided_differences(line: Line) -> dict[int, fmpz_mpoly]:
-    """d_i on a line: coefficients of x_i^k x_(i+1)^(size-1-k)."""
-    coefficients, size = line.coefficients, line.size
-    low = min(min(coefficients), size - max(coefficients))
-    result: dict[int, fmpz_mpoly] = {}
-    # (x^k y^(s-k) - x^(s-k) y^k)/(x - y): the result is symmetric, so half of it is enough
-    running = None
-    for k in range(low, (size - 1) // 2 + 1):
-        left, right = coefficients.get(k), coefficients.get(size - k)
-        if left is not None:
-            running = -left if running is None else running - left
-        if right is not None:
-            running = right if running is None else running + right
-        if running is not None and running:
-            result[k] = running
-            result[size - 1 - k] = running
-    return result
 
 
 def _intertwine_line(
@@ -441,9 +400,9 @@ def _chains(mu: Composition, j: int | None) -> dict[Composition, Scalar]:
             # a chain that has not met j yet may not jump over it
             end = n if j is None or last >= j else j + 1
             for b in range(last + 1, end):
-                step = steps.get((last, b))
-                if step is not None:
-                    stack.append(((*chain, b), value * step))
+                hop = steps.get((last, b))
+                if hop is not None:
+                    stack.append(((*chain, b), value * hop))
         budget.current().check_terms(len(result), "this product")
     return result
 
@@ -457,20 +416,27 @@ def _closing(hops: _Hops, last: int, j: int | None) -> Scalar:
              * weight_scalar((-1, hops.u[last][1] - n)))
 
 
-def monk_rows(mu: Composition, j: int) -> list[MonkRow]:
-    """All subsets through j with their factors, vanishing ones included, by size then order."""
+def monk_rows(mu: Composition, j: int | None) -> list[MonkRow]:
+    """All subsets through j with their factors, vanishing ones included, by size then order.
+
+    Without j: all nonempty subsets, the rows of (x_1 + ... + x_n) E_mu.
+    """
     hops = _Hops(mu)
     n, u = hops.n, hops.u
-    others = [i for i in range(n) if i != j - 1]
-    rows = []
-    for chosen in subsets(others):
-        chain = tuple(sorted((*chosen, j - 1)))
+    through = () if j is None else (j - 1,)
+    rows: list[MonkRow] = []
+    for chosen in subsets([i for i in range(n) if i not in through]):
+        chain = tuple(sorted((*chosen, *through)))
+        if not chain:
+            continue
+        budget.current().check_terms(len(rows), "this table")
         factors: list[tuple[str, Scalar]] = [
-            (f"constant at {chain[-1] + 1}", _closing(hops, chain[-1], j - 1))]
+            (f"constant at {chain[-1] + 1}",
+             _closing(hops, chain[-1], None if j is None else j - 1))]
         obstacle = None
         for a, b in zip(chain, (*chain[1:], chain[0]), strict=True):
             arriving = hops.departure(a, b)
-            if b == j - 1:
+            if j is not None and b == j - 1:
                 factors.append((f"arrival {a + 1} -> {b + 1}", weight_scalar(arriving)))
             else:
                 factors.append((f"hop {a + 1} -> {b + 1}", mixing(ratio(u[b], arriving))))
@@ -511,6 +477,20 @@ class NonsymmetricMacdonald(Family):
         if power == 1:
             return multiply_by_generator(index, j)
         return divide_by_generator(index, j) if power == -1 else None
+
+    def times_element(
+        self, index: Index, n: int, other: Family, other_index: Index
+    ) -> Coefficients | None:
+        """By the closed rules for e_r, and for P over its orbit."""
+        from spanwright.kernel.families import nonsymmetric_products
+
+        return nonsymmetric_products.times_E(other, other_index, index)
+
+    def convert_from(self, other: Family, index: Index, n: int) -> Coefficients | None:
+        """A symmetric Macdonald polynomial over its orbit."""
+        from spanwright.kernel.families import nonsymmetric_products
+
+        return nonsymmetric_products.into_E(other, index, n)
 
 
 FAMILIES = {"E": NonsymmetricMacdonald()}

@@ -12,9 +12,10 @@ from heapq import heapify, heappop, heappush
 from typing import Any
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import Exponents, ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import OutsideDomain, OverBudget
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import Exponents, ParameterRing
 
 DIGIT = 16
 LARGEST = (1 << DIGIT) - 1
@@ -57,8 +58,9 @@ def multiplied(a: Mapping[int, int], b: Mapping[int, int]) -> Packed:
     found: Packed = {}
     items = list(b.items())
     get = found.get
+    limits = budget.current()
     for k, c in a.items():
-        budget.current().check()
+        limits.check()
         for m, d in items:
             key = k + m
             found[key] = get(key, 0) + c * d
@@ -77,13 +79,14 @@ def by_leaders(
     waiting = [-key for key in left]
     heapify(waiting)
     found: Packed = {}
+    limits = budget.current()
     while waiting:
         key = -heappop(waiting)
         c = left.pop(key)
         if not c:
             continue
         found[key] = c
-        budget.current().check_terms(len(found), "this expansion")
+        limits.check_terms(len(found), "this expansion")
         subtract(left, element(key), c, waiting, key)
     return found
 

@@ -36,7 +36,7 @@ def modified_qt_kostka(shape: Partition, index: Partition) -> Scalar:
 
 
 def kostka_foulkes(shape: Partition, index: Partition) -> Scalar:
-    """K_(shape, index)(t) = K_(shape, index)(0, t) (VI.8.12)."""
+    """K_(shape, index)(t) = K_(shape, index)(0, t) (VI.8)."""
     return qt_kostka(shape, index).substitute({"q": Scalar.zero(RING)})
 
 

@@ -10,7 +10,10 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
+
+from flint import Ordering, fmpz_mpoly, fmpz_mpoly_ctx
 
 from spanwright.kernel import budget
 from spanwright.kernel.errors import OutsideDomain
@@ -28,8 +31,10 @@ from spanwright.kernel.families.packed import (
     digits,
     from_laurent,
     multiplied,
+    pack,
     scalar,
     to_laurent,
+    unpack,
 )
 from spanwright.kernel.indices import (
     Permutation,
@@ -45,6 +50,7 @@ from spanwright.kernel.indices import (
     trimmed,
 )
 from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.parameters import Exponents
 
 Integers = dict[Permutation, int]
 """A sum of basis elements with integer coefficients."""
@@ -98,11 +104,14 @@ def check_variables(w: Permutation, n: int, name: str) -> None:
 
 
 class _Memory:
-    """Packed polynomials S_w by the inverse permutation, and by the leading monomial."""
+    """Packed polynomials S_w by the inverse permutation, by w, and by the leading monomial."""
 
     def __init__(self) -> None:
         self.by_inverse: dict[Permutation, dict[int, int]] = {}
+        self.by_index: dict[Permutation, dict[int, int]] = {}
         self.by_leader: dict[int, dict[int, int]] = {}
+        self.indices: dict[int, Permutation] = {}
+        self.dense: dict[int, dict[Exponents, tuple[Permutation, fmpz_mpoly]]] = {}
         self.n_monomials = 0
 
     def make_room(self) -> None:
@@ -111,7 +120,10 @@ class _Memory:
 
     def forget(self) -> None:
         self.by_inverse.clear()
+        self.by_index.clear()
         self.by_leader.clear()
+        self.indices.clear()
+        self.dense.clear()
         self.n_monomials = 0
 
 
@@ -163,7 +175,11 @@ def first_rows(
 
 def polynomial(w: Permutation) -> Mapping[int, int]:
     """S_w in packed monomials (see packed.py), remembered."""
-    return _polynomial(reduced_size(inverse(w)))
+    found = _memory.by_index.get(w)
+    if found is None:
+        found = _polynomial(reduced_size(inverse(w)))
+        _memory.by_index[w] = found
+    return found
 
 
 def _polynomial(inverse_of_w: Permutation) -> dict[int, int]:
@@ -200,8 +216,16 @@ def _with_leader(key: int) -> dict[int, int]:
     """S_w by its leading monomial x^code(w)."""
     found = _memory.by_leader.get(key)
     if found is None:
-        w = from_code(digits(key))
-        found = _memory.by_leader[key] = _polynomial(reduced_size(inverse(w)))
+        found = _polynomial(reduced_size(inverse(with_code(key))))
+        _memory.by_leader[key] = found
+    return found
+
+
+def with_code(key: int) -> Permutation:
+    """The permutation whose code is packed in the key, remembered."""
+    found = _memory.indices.get(key)
+    if found is None:
+        found = _memory.indices[key] = from_code(digits(key))
     return found
 
 
@@ -216,8 +240,7 @@ def to_monomials(w: Permutation, n: int) -> LaurentPolynomial:
 
 def from_packed(terms: Mapping[int, Any]) -> dict[Permutation, Any]:
     """The coefficients of a packed polynomial in the S_w."""
-    return {
-        from_code(digits(key)): c for key, c in by_leaders(terms, _with_leader).items()}
+    return {with_code(key): c for key, c in by_leaders(terms, _with_leader).items()}
 
 
 def from_monomials(given: LaurentPolynomial) -> Coefficients:
@@ -338,7 +361,9 @@ def transition(w: Permutation) -> Transition:
     return Transition(r, s, v, tuple(upward_into(v, r)))
 
 
-# Up to this many products of two monomials, multiplying out and expanding is the faster route.
+# Above this many products of two monomials flint's polynomials beat dictionaries, above the
+# second number the route by rows, which needs no S_w in monomials, beats both (measured).
+FLINT_PRODUCTS = 300
 MONOMIAL_PRODUCTS = 100_000
 
 
@@ -350,11 +375,42 @@ def multiply(u: Permutation, v: Permutation) -> Integers:
             kind, r, k = found
             return pieri_e(second, r, k) if kind == "e" else pieri_h(second, r, k)
     a, b = polynomial(u), polynomial(v)
-    if len(a) * len(b) > MONOMIAL_PRODUCTS:
+    n_products = len(a) * len(b)
+    if n_products > MONOMIAL_PRODUCTS:
         return multiply_by_rows(u, v)
+    if n_products > FLINT_PRODUCTS:
+        return _multiply_by_flint(a, b, max(n_variables(u), n_variables(v)))
     return from_packed(multiplied(a, b))
 
 
+def _multiply_by_flint(a: Mapping[int, int], b: Mapping[int, int], n: int) -> Integers:
+    """Multiply out and subtract leaders; the last variable comes first, as in packed keys."""
+    context = fmpz_mpoly_ctx.get(tuple(f"x{k}" for k in range(n, 0, -1)), Ordering.lex)
+
+    def dense(terms: Mapping[int, int]) -> fmpz_mpoly:
+        return context.from_dict({unpack(key, n)[::-1]: c for key, c in terms.items()})
+
+    left = dense(a) * dense(b)
+    _memory.make_room()
+    known = _memory.dense.setdefault(n, {})
+    found: Integers = {}
+    limits = budget.current()
+    while left:
+        leader = tuple(map(int, left.monomial(0)))
+        element = known.get(leader)
+        if element is None:
+            key = pack(leader[::-1])
+            element = known[leader] = with_code(key), dense(_with_leader(key))
+            _memory.n_monomials += len(element[1])
+        w, polynomial_of_w = element
+        c = left.coefficient(0)
+        found[w] = int(c)
+        left = left - (polynomial_of_w if c == 1 else polynomial_of_w * c)
+        limits.check_terms(len(found), "this product")
+    return found
+
+
+@lru_cache(maxsize=100_000)
 def as_pieri(w: Permutation) -> tuple[str, int, int] | None:
     """("e", r, k) or ("h", r, k) when S_w is e_k or h_k of x_1, ..., x_r; None else."""
     c = trimmed(code(w))

@@ -13,13 +13,14 @@ from fractions import Fraction
 from typing import Protocol
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families.base import Coefficients, Family, Index, linear
 from spanwright.kernel.families.diagrams import Partition
 from spanwright.kernel.families.transitions import transition
 from spanwright.kernel.indices import is_partition, orbit, padded, swapped, trimmed
 from spanwright.kernel.laurent import LaurentPolynomial, Terms
+from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
 

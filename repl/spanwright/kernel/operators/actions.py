@@ -6,22 +6,20 @@ On sums of E_mu the letters X, T, Y, T_pi, tau_i, tau_pi, symmetrizer act withou
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from functools import partial
+from collections.abc import Callable, Mapping, Sequence
+from functools import lru_cache, partial
 from typing import TypeAlias
 
 from flint import fmpz_mpoly
 
 from spanwright.kernel import budget, indices
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import Mixed
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Coefficients, Family, Index, linear
 from spanwright.kernel.families.nonsymmetric_macdonald import (
     ONE,
-    divided_differences,
     eigenvalue_weight,
-    lines,
     mixing,
     one_minus,
     quadratic,
@@ -32,6 +30,7 @@ from spanwright.kernel.families.nonsymmetric_macdonald import (
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.indices import Composition
 from spanwright.kernel.laurent import LaurentPolynomial, Terms, total_polynomial
+from spanwright.kernel.lines import divided_differences, lines
 from spanwright.kernel.operators.elements import parameter_t, t_power
 from spanwright.kernel.operators.hecke import power_of_t
 from spanwright.kernel.operators.words import (
@@ -40,9 +39,9 @@ from spanwright.kernel.operators.words import (
     Operator,
     Word,
     cherednik_steps,
-    half_power,
-    half_powers,
+    normalising,
 )
+from spanwright.kernel.parameters import ParameterRing
 
 Value: TypeAlias = "LaurentPolynomial | Expansion"
 
@@ -106,12 +105,10 @@ def _applied(operator: Operator, value: Value) -> Value:
                     current = _applied(factor.operator, current)
             else:
                 current = letter_on(factor, current)
-                h = half_powers(factor, operator.n) if balanced else 0
-                if h:
-                    current = current.scaled(half_power(h))
             if n_seen.get(word[k:], 0) > 1:
                 ends[word[k:]] = current
-        images.append(current.scaled(c))
+        # the powers of t^(1/2) of a word at once: they are often whole together
+        images.append(current.scaled(c * normalising(word, operator.n) if balanced else c))
     return _sum(images) if images else value.scaled(Scalar.zero(ParameterRing.get()))
 
 
@@ -122,10 +119,8 @@ def _sum(values: list[Value]) -> Value:
     if isinstance(first, Expansion) and all(
         isinstance(v, Expansion) and v.family is first.family for v in values
     ):
-        pairs = enumerate(v for v in values if isinstance(v, Expansion))
-        by_place = {(k,): v for k, v in pairs}
-        terms = linear(dict.fromkeys(by_place, ONE), lambda place: by_place[place].terms)
-        return Expansion(first.family, first.n, terms)
+        return Expansion(first.family, first.n, _added(
+            [v.terms for v in values if isinstance(v, Expansion)]))
     return total_polynomial([as_polynomial(v) for v in values])
 
 
@@ -133,8 +128,9 @@ def letter_on(letter: Letter, value: Value) -> Value:
     """One letter, plain normalisation, on a polynomial or an expansion."""
     if isinstance(value, Expansion):
         if has_closed_rule(letter, value.family):
-            rule = _rules[value.family.name] if value.family.name in _rules else _on_symmetric
-            return Expansion(value.family, value.n, rule(letter, value.family, value.n, value.terms))
+            rule = _rules.get(value.family.name, _on_symmetric)
+            images = rule(letter, value.family, value.n, value.terms)
+            return Expansion(value.family, value.n, images)
         value = value.to_monomials()
     if letter.kind == "tau":
         basis = family("E")
@@ -159,9 +155,9 @@ def _on_polynomial(letter: Letter, f: LaurentPolynomial) -> LaurentPolynomial:
         steps, m, e = cherednik_steps(f.n, w)
         work.turn(m * f.n)  # (Y_1 ... Y_n)^m = t^(m n(n-1)/2) T_pi^(nm)
         work.scale = work.scale * t_power(f.ring, e + m * f.n * (f.n - 1) // 2)
-        for i, k in steps:
-            if i:
-                work.hecke(i, k)
+        for position, k in steps:
+            if position:
+                work.hecke(position, k)
             else:
                 work.turn(k)
     elif kind == "T_pi":
@@ -185,11 +181,11 @@ def _on_polynomial(letter: Letter, f: LaurentPolynomial) -> LaurentPolynomial:
         else:
             word = indices.reduced_word(w)
             for _ in range(abs(letter.power)):
-                for i in reversed(word) if letter.power > 0 else word:
+                for j in reversed(word) if letter.power > 0 else word:
                     if kind == "T":
-                        work.hecke(i, 1 if letter.power > 0 else -1)
+                        work.hecke(j, 1 if letter.power > 0 else -1)
                     else:
-                        work.divide(i, shift=int(kind == "pi"))
+                        work.divide(j, shift=int(kind == "pi"))
     return LaurentPolynomial.reduced(f.n, f.ring, work.terms, work.scale)
 
 
@@ -349,6 +345,7 @@ def cherednik_eigenvalue(nu: Composition, mu: Composition) -> Scalar:
     return weight_scalar((q_power, t_exponent))
 
 
+@lru_cache(maxsize=50_000)
 def hecke_on_element(i: int, k: int, mu: Composition) -> Coefficients:
     """T_i^k E_mu, plain normalisation."""
     if mu[i - 1] == mu[i]:
@@ -391,18 +388,18 @@ def _x_on_e(basis: Family, exponents: Composition, terms: Coefficients) -> Coeff
     n = len(exponents)
     m = sorted(exponents)[n // 2]
     for j, e in enumerate(exponents, 1):
-        sign = 1 if e > m else -1
-
-        def rule(mu: Composition, j: int = j, sign: int = sign) -> Coefficients:
-            found = basis.times_generator(mu, n, j, sign)
-            assert found is not None
-            return found
-
         for _ in range(abs(e - m)):
-            terms = linear(terms, rule)
+            terms = linear(terms, partial(_generator_on_element, basis, j, 1 if e > m else -1))
     if m:
         terms = {tuple(part + m for part in mu): c for mu, c in terms.items()}
     return terms
+
+
+@lru_cache(maxsize=20_000)
+def _generator_on_element(basis: Family, j: int, sign: int, mu: Composition) -> Coefficients:
+    found = basis.times_generator(mu, len(mu), j, sign)
+    assert found is not None
+    return found
 
 
 def symmetrized_element(mu: Composition) -> Coefficients:
@@ -438,14 +435,20 @@ def symmetrized_element(mu: Composition) -> Coefficients:
 def _antisymmetrized(n: int, terms: Coefficients) -> Coefficients:
     minus = -weight_scalar((0, -1))
     for k in range(1, n):
-        partial_sums = [terms]
+        partial_sums: list[Mapping[Index, Scalar]] = [terms]
         for i in range(k, 0, -1):
             step = linear(partial_sums[-1], partial(hecke_on_element, i, 1))
             partial_sums.append({mu: c * minus for mu, c in step.items()})
-        terms = linear(
-            {(j,): ONE for j in range(len(partial_sums))},
-            lambda place, sums=partial_sums: sums[place[0]])
-    return terms
+        terms = _added(partial_sums)
+    return dict(terms)
+
+
+def _added(sums: Sequence[Mapping[Index, Scalar]]) -> Coefficients:
+    collected: dict[Index, list[Scalar]] = {}
+    for terms in sums:
+        for index, c in terms.items():
+            collected.setdefault(index, []).append(c)
+    return {index: total(cs) for index, cs in collected.items()}
 
 
 # on other families

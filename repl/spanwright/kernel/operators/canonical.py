@@ -12,16 +12,19 @@ from fractions import Fraction
 from typing import Any
 
 from spanwright.kernel import indices
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import Mixed, NotAUnit, OutsideDomain
 from spanwright.kernel.laurent import support_order
+from spanwright.kernel.operators.actions import Value, act
 from spanwright.kernel.operators.double_affine import DoubleAffineHeckeAlgebra
 from spanwright.kernel.operators.elements import Algebra, Element
 from spanwright.kernel.operators.hecke import HeckeAlgebra
+from spanwright.kernel.operators.intertwiners import is_zero_operator
 from spanwright.kernel.operators.nil_hecke import NilHeckeAlgebra
 from spanwright.kernel.operators.smash import SmashProduct
-from spanwright.kernel.operators.words import Letter, Operator, half_power
+from spanwright.kernel.operators.words import Letter, Operator, Word, half_power
 from spanwright.kernel.operators.zero_hecke import ZeroHeckeAlgebra
+from spanwright.kernel.parameters import ParameterRing
 
 ALGEBRAS: dict[tuple[str, ...], str] = {
     (): "scalars",
@@ -139,12 +142,16 @@ class CanonicalOperator:
 
     def to_operator(self) -> Operator:
         """The same operator as a sum of words."""
-        terms = {}
+        terms: dict[Word, Scalar] = {}
         for key, c in self.items():
             terms[tuple(
                 Letter(letter, part) for letter, part in zip(self.letters, key, strict=True)
                 if not _is_identity(letter, part))] = c
         return Operator(self.n, terms, self.normalisation)
+
+    def apply(self, value: Value) -> Value:
+        """The operator applied to a polynomial or an expansion, as `actions.act` does it."""
+        return act(self.to_operator(), value)
 
     # arithmetic
 
@@ -225,8 +232,7 @@ def algebra_letters(kinds: Iterable[str]) -> tuple[str, ...]:
     if strangers:
         raise Mixed(
             f"{', '.join(sorted(finite))} and {', '.join(sorted(strangers))} together lie in no "
-            "algebra here",
-            hints=(_COMBINE,))
+            f"algebra here: {_COMBINE}")
     hecke = found & _HECKE_KINDS - {"X"}
     if len(finite) == 1 and not hecke:
         letter, = finite
@@ -277,8 +283,7 @@ def _machine(
             algebra_letters(kinds)
             raise Mixed(
                 f"{', '.join(sorted(kinds & _FINITE_KINDS))} is not in the "
-                f"{ALGEBRAS[target]} with the letters {', '.join(target) or 'none'}",
-                hints=(_COMBINE,))
+                f"{ALGEBRAS[target]} with the letters {', '.join(target) or 'none'}: {_COMBINE}")
         if algebra_letters(kinds)[-1:] == ("Y",) or "Y" in target:
             return DoubleAffineHeckeAlgebra(ring, n), ("X", "T", "Y"), "T"
         return HeckeAlgebra(ring, n), ("X", "T"), "T"
@@ -290,8 +295,7 @@ def _machine(
         algebra_letters(kinds)
         raise Mixed(
             f"{', '.join(sorted(strangers))} is not in the {ALGEBRAS['X', basis]} "
-            f"with the letters X, {basis}",
-            hints=(_COMBINE,))
+            f"with the letters X, {basis}: {_COMBINE}")
     return algebra, ("X", basis), basis
 
 
@@ -332,8 +336,6 @@ def is_same_operator(a: Operator, b: Operator) -> bool:
     if difference.is_zero:
         return True
     if "tau" in difference.kinds():
-        from spanwright.kernel.operators.intertwiners import is_zero_operator
-
         return is_zero_operator(difference)
     return straighten(difference).is_zero
 

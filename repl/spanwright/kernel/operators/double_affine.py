@@ -12,7 +12,7 @@ from functools import lru_cache
 from flint import fmpz_mpoly
 
 from spanwright.kernel import budget, indices
-from spanwright.kernel.coefficients import Exponents, ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.operators.elements import (
     Element,
     Row,
@@ -23,6 +23,7 @@ from spanwright.kernel.operators.elements import (
 )
 from spanwright.kernel.operators.hecke import HeckeAlgebra, HeckeRule, past_finite
 from spanwright.kernel.operators.words import Letter, cherednik_steps
+from spanwright.kernel.parameters import Exponents, ParameterRing
 
 Table = tuple[tuple[indices.Permutation, Exponents, fmpz_mpoly], ...]
 

@@ -16,10 +16,10 @@ from functools import lru_cache
 from flint import fmpz_mpoly
 
 from spanwright.kernel import budget, indices
-from spanwright.kernel.coefficients import Exponents, ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar, common_denominator, polynomial_of
 from spanwright.kernel.errors import Mixed
-from spanwright.kernel.laurent import common_denominator, polynomial_of
-from spanwright.kernel.operators.words import Group, Letter, Operator, half_power, half_powers
+from spanwright.kernel.operators.words import Group, Letter, Operator, normalising
+from spanwright.kernel.parameters import Exponents, ParameterRing
 
 Key = tuple[indices.Permutation, Exponents]
 Row = dict[Key, fmpz_mpoly]
@@ -191,11 +191,8 @@ class Algebra(ABC):
                         current = self.applied(factor.operator, current)
                     continue
                 current = self.multiply(factor, current)
-                h = half_powers(factor, self.n) if balanced else 0
-                if h:
-                    current = current.scaled(half_power(h))
                 budget.current().check_terms(current.n_terms(), "this canonical form")
-            found.append(current.scaled(c))
+            found.append(current.scaled(c * normalising(word, self.n) if balanced else c))
         return total_element(found) if found else Element(self.ring, {}, element.scale)
 
     def shifted(self, element: Element, mu: Exponents) -> Element:

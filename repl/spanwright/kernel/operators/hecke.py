@@ -12,7 +12,6 @@ from functools import lru_cache
 from flint import fmpz_mpoly
 
 from spanwright.kernel import indices
-from spanwright.kernel.coefficients import Exponents, ParameterRing
 from spanwright.kernel.errors import Mixed
 from spanwright.kernel.operators.elements import (
     Algebra,
@@ -27,6 +26,7 @@ from spanwright.kernel.operators.elements import (
     without_zeros,
 )
 from spanwright.kernel.operators.words import Letter
+from spanwright.kernel.parameters import Exponents, ParameterRing
 
 
 class HeckeRule(Rule):

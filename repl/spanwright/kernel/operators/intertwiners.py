@@ -9,10 +9,11 @@ tau_i^2 = (1-tz)(t-z)/(1-z)^2 with z = Y_i^-1 Y_(i+1), X_1 = tau_pi T_(n-1) ... 
 from __future__ import annotations
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import Exponents, ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import Mixed
 from spanwright.kernel.indices import reduced_word
-from spanwright.kernel.operators.words import Group, Letter, Operator, half_power, half_powers
+from spanwright.kernel.operators.words import Group, Letter, Operator, normalising
+from spanwright.kernel.parameters import Exponents, ParameterRing
 
 Window = tuple[int, ...]
 """w(1), ..., w(n) of an affine permutation, w(i + n) = w(i) + n."""
@@ -65,22 +66,22 @@ class _Localisation:
         t = self.ring.exponents({"t": 1})
         ring = self.ring
         return (
-            ring.one_minus(tuple(map(int.__add__, z, t)))
-            * ring.one_minus(tuple(map(int.__sub__, z, t))) * Scalar.parameter(ring, "t")
-            * ring.one_minus(z) ** -2)
+            Scalar.one_minus(ring, tuple(map(int.__add__, z, t)))
+            * Scalar.one_minus(ring, tuple(map(int.__sub__, z, t))) * Scalar.parameter(ring, "t")
+            * Scalar.one_minus(ring, z) ** -2)
 
     def t(self, i: int, form: Form) -> Form:
         """T_i = tau_i - (1-t)/(1-z)."""
-        one_minus_t = self.ring.one_minus(self.ring.exponents({"t": 1}))
+        one_minus_t = Scalar.one_minus(self.ring, self.ring.exponents({"t": 1}))
         own = {
-            window: -(f * one_minus_t * self.ring.one_minus(self._ratio(window, i)).inverse())
+            window: -(f * one_minus_t / Scalar.one_minus(self.ring, self._ratio(window, i)))
             for window, f in form.items()}
         return added((self.tau(i, form), own))
 
     def t_inverse(self, i: int, form: Form) -> Form:
         """T_i^-1 = (T_i + 1 - t)/t."""
         t = Scalar.parameter(self.ring, "t")
-        one_minus_t = self.ring.one_minus(self.ring.exponents({"t": 1}))
+        one_minus_t = Scalar.one_minus(self.ring, self.ring.exponents({"t": 1}))
         return scaled(added((self.t(i, form), scaled(form, one_minus_t))), t.inverse())
 
     def y(self, nu: Exponents, form: Form) -> Form:
@@ -164,8 +165,8 @@ class _Localisation:
                         current = self.applied(factor.operator, current)
                     continue
                 current = self.letter(factor, current)
-                if operator.normalisation == "balanced":
-                    current = scaled(current, half_power(half_powers(factor, self.n)))
+            if operator.normalisation == "balanced":
+                c = c * normalising(word, self.n)
             found.append(scaled(current, c))
         return added(found)
 

@@ -7,7 +7,7 @@ Kostant and Kumar, The nil Hecke ring, 1986).
 from __future__ import annotations
 
 from spanwright.kernel import indices
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.operators.elements import (
     Algebra,
     Element,
@@ -20,6 +20,7 @@ from spanwright.kernel.operators.elements import (
 )
 from spanwright.kernel.operators.hecke import power_of_t
 from spanwright.kernel.operators.words import Letter
+from spanwright.kernel.parameters import ParameterRing
 
 
 class NilRule(Rule):

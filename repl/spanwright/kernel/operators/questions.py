@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import ParameterRing, Scalar
+from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Index
 from spanwright.kernel.families.registry import family
+from spanwright.kernel.laurent import support_order
 from spanwright.kernel.operators.actions import Value, act, as_polynomial
 from spanwright.kernel.operators.words import Operator
+from spanwright.kernel.parameters import ParameterRing
 
 
 class NotAnEigenvector(OutsideDomain):
@@ -80,14 +83,12 @@ def matrix(operator: Operator, elements: Sequence[Value]) -> OperatorMatrix:
     together = [*values, *images]
     first = together[0] if together else None
     name = "x"
+    order: Callable[[Index], Any] = support_order
     if isinstance(first, Expansion) and all(
         isinstance(v, Expansion) and v.family is first.family for v in together
     ):
-        name = first.family.name
-        order = first.family.order_key
+        name, order = first.family.name, first.family.order_key
     else:
-        from spanwright.kernel.laurent import support_order as order
-
         values = [as_polynomial(v) for v in values]
         images = [as_polynomial(v) for v in images]
     span = _Span([_coordinates(v) for v in values])

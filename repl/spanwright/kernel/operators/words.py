@@ -12,8 +12,9 @@ from fractions import Fraction
 from typing import TypeAlias
 
 from spanwright.kernel import budget, indices
-from spanwright.kernel.coefficients import ParameterRing, Scalar, total
+from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import Mixed, NotAUnit, OutsideDomain, OverBudget
+from spanwright.kernel.parameters import ParameterRing
 
 NORMALISATIONS = ("plain", "balanced")
 """plain: (T_i - t)(T_i + 1) = 0; balanced: T_i/t^(1/2), tau_i/t^(1/2) and t^(-(n-1)/2) Y_i."""
@@ -421,6 +422,11 @@ def half_power(h: int) -> Scalar:
     if h % 2 == 0:
         return Scalar.parameter(ParameterRing.get(), "t") ** (h // 2)
     return Scalar.root_of_t() ** h
+
+
+def normalising(word: Word, n: int) -> Scalar:
+    """word(balanced) / word(plain), what stands in parentheses left out."""
+    return half_power(sum(half_powers(f, n) for f in word if isinstance(f, Letter)))
 
 
 def cherednik_steps(n: int, nu: tuple[int, ...]) -> tuple[list[tuple[int, int]], int, int]:

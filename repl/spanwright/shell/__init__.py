@@ -1,0 +1,1 @@
+"""The interactive shell: a line is read, its replies are set on the screen."""
