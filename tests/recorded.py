@@ -16,7 +16,7 @@ from spanwright.rendering.digest import digest
 from spanwright.replay import Options, Replayed, replay
 from spanwright.replies import Reply
 from spanwright.session import Outcome, Session
-from spanwright.settings import Settings
+from spanwright.settings import Bounds, Settings
 from spanwright_grammar.source import Source
 
 DEMO = """\
@@ -62,9 +62,9 @@ def reply_of(outcome: Outcome) -> Reply:
     return replace(reply, digest=digest(outcome.raw))
 
 
-def opening(folder: Folder) -> Talk:
+def opening(folder: Folder, bounds: Bounds) -> Talk:
     """A fresh conversation below a folder."""
-    return Talk(Session(folder=folder))
+    return Talk(Session(folder=folder, bounds=bounds))
 
 
 def log_text(inputs: str | Iterable[str], folder: Path | None = None) -> str:
@@ -93,7 +93,8 @@ class _Kept(Journal):
 def again(text: str, **options: Any) -> Replayed:
     """A log's text run again."""
     log: Log = read_log(text, "demo.span")
-    return replay(log, "demo.span", Options(**options), Talk(Session()))
+    chosen = Options(**options)
+    return replay(log, "demo.span", chosen, Talk(Session(bounds=chosen.bounds)))
 
 
 def write_log(path: Path, inputs: str | Iterable[str]) -> None:

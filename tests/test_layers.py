@@ -102,7 +102,7 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
     # < sentences < session < records.
     "spanwright.kernel": (),
     "spanwright.values": ("spanwright.kernel",),
-    "spanwright.settings": ("spanwright.kernel",),
+    "spanwright.settings": ("spanwright.kernel", "spanwright_grammar.vocabulary"),
     "spanwright.rendering": (*_VALUES, "spanwright.tally"),
     "spanwright.limits": (),
     "spanwright.context": (*_TREE, *_VALUES, "spanwright.settings"),
@@ -152,7 +152,9 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
         *_LANGUAGE,
         *(
             f"spanwright.{name}"
-            for name in ("conversation", "files", "headers", "journal", "log_format", "replies")
+            for name in (
+                "conversation", "files", "headers", "journal", "log_format", "replies",
+                "settings")
         ),
     ),
     "spanwright.reading": (*_LANGUAGE, *_COMPUTED),
@@ -200,13 +202,17 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
     "spanwright.process": ("spanwright.files", "spanwright.frames", "spanwright.replies"),
     "spanwright.conversation": (
         "spanwright_grammar.source",
-        *(f"spanwright.{name}" for name in ("files", "process", "replies", "session")),
+        *(f"spanwright.{name}" for name in (
+            "files", "process", "replies", "session", "settings")),
     ),
     "spanwright.crashes": (*_TREE, "spanwright.context"),
+    "spanwright.quick": (*_TREE, *_GROUND),
     "spanwright.evaluating": (
+        "spanwright.quick",
         *_TREE,
         "spanwright_grammar.parsing",
         *_SESSION,
+        "spanwright.confinement",
         "spanwright.crashes",
         "spanwright.frames",
     ),
@@ -267,9 +273,10 @@ PRINTS_IN = ("spanwright.cli", "spanwright.shell.loop")
 OPENS_FILES_IN = (
     "spanwright.cli",
     "spanwright.files",
-    # how much memory is free, which /proc says
-    "spanwright.evaluating",
+    # how much memory is free and mapped, which /proc says
     "spanwright.confinement",
+    # the device that swallows what is printed
+    "spanwright.evaluating",
     "spanwright.editor_commands",
     "spanwright.finished",
     "spanwright.pool",

@@ -20,15 +20,21 @@ from spanwright_grammar.diagnostics import Diagnostic, error
 from spanwright_grammar.parsing import Parsed, Piece
 from spanwright_grammar.source import Span
 from spanwright_grammar.spelling import nearest
-from spanwright_grammar.vocabulary import RESERVED, VOCABULARY, lookup_all
+from spanwright_grammar.vocabulary import (
+    FORMS,
+    RESERVED,
+    SETTING_WORDS,
+    VOCABULARY,
+    lookup_all,
+    words_like,
+)
 
 # Families whose index has exactly n parts; partitions and permutations may be written shorter.
 INDEXED_BY_COMPOSITIONS = frozenset({"E", "kappa", "atom"})
 # Symbols whose subscript is a position: how far below n the last one lies.
-POSITIONS = {"x": 0, "X": 0, "Y": 0, "T": 1, "s": 1, "d": 1, "pi": 1, "tau": 1}
+POSITIONS = {"x": 0, "X": 0, "Y": 0, "T": 1, "s": 1, "d": 1, "pi": 1, "tau": 1, "eps": 0}
 
 _KNOWN_WITHOUT_ENTRY = frozenset({"n", "true", "false", "free"})
-_SUGGESTED_KINDS = frozenset({"family", "operator", "function", "set", "parameter"})
 _FUNCTION = "a function of "
 
 
@@ -271,6 +277,8 @@ def _check_sentence(
         return
     if isinstance(sentence, syntax.Expand):
         yield from _check_targets(sentence, text)
+    if isinstance(sentence, syntax.Show | syntax.Write):
+        yield from _check_form(sentence)
     bound = dict.fromkeys(enclosing, -1)
     # The body of a function is looked up when it is called: by then the name may be there.
     is_later = known.facts.is_later
@@ -291,6 +299,27 @@ def _check_setting(sentence: syntax.Fix) -> Iterator[Diagnostic]:
             sentence.place,
             f"there is no setting {sentence.setting}",
             f"fix {near} = …" if near else "fix n = 3",
+        )
+        return
+    words = SETTING_WORDS.get(sentence.setting)
+    found = sentence.value.name if isinstance(sentence.value, syntax.Name) else ""
+    if words and found not in words:
+        yield error(
+            "setting-out-of-range",
+            sentence.value.place,
+            f"{sentence.setting} is one of {', '.join(words)}",
+            f"fix {sentence.setting} = {nearest(found, words) or words[0]}",
+        )
+
+
+def _check_form(sentence: syntax.Show | syntax.Write) -> Iterator[Diagnostic]:
+    """`show f as form`: a form that does not exist."""
+    if sentence.form not in FORMS:
+        yield error(
+            "unknown-form",
+            sentence.place,
+            f"there is no form {sentence.form}: one of {', '.join(FORMS)}",
+            f"show f as {nearest(sentence.form, FORMS) or 'latex'}",
         )
 
 
@@ -354,7 +383,7 @@ def _check_name(
         *bound,
         *ledger.names,
         *ledger.parameters,
-        *(entry.name for entry in VOCABULARY if entry.kind in _SUGGESTED_KINDS),
+        *words_like(name),
     )
     near = nearest(name, known)
     if near and len(name) == 1 and near.lower() != name.lower():
@@ -395,7 +424,7 @@ def _check_parts(
             parts = [text[item.place.start : item.place.end] for item in items]
         case syntax.Group(inner=syntax.Number(digits=digits)):
             parts = [digits]
-        case syntax.Number(digits=digits) if n > 1 and len(digits) > 1:
+        case syntax.Number(digits=digits) if n > 1:
             parts = list(digits)
         case _:
             return
@@ -403,6 +432,8 @@ def _check_parts(
         right = ",".join([*parts, *["0"] * (n - len(parts))][:n])
         counted = "1 part" if len(parts) == 1 else f"{len(parts)} parts"
         shown = text[node.place.start : node.place.end]
+        if isinstance(index, syntax.Number):  # digits run together
+            shown = f"{head}_({','.join(parts)})"
         yield error(
             "wrong-number-of-parts",
             node.place,

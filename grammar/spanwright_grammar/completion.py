@@ -16,25 +16,17 @@ from spanwright_grammar.lexing import (
     scan,
 )
 from spanwright_grammar.parsing import expected_after
-from spanwright_grammar.vocabulary import Entry, by_kind, lookup, lookup_all
+from spanwright_grammar.vocabulary import (
+    FORMS,
+    SETTING_WORDS,
+    Entry,
+    by_kind,
+    lookup,
+    lookup_all,
+)
 
-# The words that a setting may have; numbers are told by the vocabulary's example.
-SETTING_WORDS: dict[str, tuple[str, ...]] = {
-    "convention": ("standard", "reversed"),
-    "hecke": ("plain", "balanced"),
-    "show": ("short", "factored", "expanded"),
-    "certainty": ("exact", "random"),
-}
 # Settings that can be taken back.
-RELEASED_BY_FREE = frozenset({"basis", "q", "t", "memory"})
-FORMS: dict[str, str] = {
-    "text": "the language itself: pastes back",
-    "latex": "for a paper",
-    "json": "for programs",
-    "html": "for a page",
-    "sympy": "for sympy, which reads it back",
-    "csv": "for a table, one row a term",
-}
+RELEASED_BY_FREE = frozenset({"basis", "q", "t", "seconds", "memory"})
 
 # Symbols with a position as subscript, and how far below n the last position lies.
 _POSITIONS = {
@@ -78,6 +70,8 @@ def complete(
     sentence = _current_sentence(lexemes)
     if last is not None and last.type == "OPEN_STRING":
         return _files(sentence, last, offset, list_files)
+    if last is not None and sentence and last.type in ("USE", "READ") and last.end < offset:
+        return _quoted_files(offset, list_files)
     tex_start = before.rfind("\\")
     if tex_start >= 0 and (before[tex_start + 1 :].isalpha() or tex_start == offset - 1):
         return list(_filtered(_tex(), before[tex_start:], tex_start))
@@ -261,11 +255,11 @@ class _Place:
             yield from _families()
         for word in SETTING_WORDS.get(name, ()):
             yield word, word, "value", setting.meaning
-        if name in RELEASED_BY_FREE:
-            yield "free", "free", "value", f"takes `fix {name} = …` back"
-        elif name not in SETTING_WORDS:
+        if name not in SETTING_WORDS and name not in ("basis", "q", "t"):
             example = setting.example.partition("= ")[2]
             yield example, example, "value", f"for instance; {setting.inputs}"
+        if name in RELEASED_BY_FREE:
+            yield "free", "free", "value", f"takes `fix {name} = …` back"
         if name in ("q", "t"):
             yield from self._words("EQUAL", "FIX")
 
@@ -461,6 +455,18 @@ def _tex() -> Iterator[_Proposal]:
     for word, sign in TEX_SIGNS.items():
         shown = "a product" if sign == "*" else sign
         yield f"\\{word}", f"\\{word}", "symbol", f"the same as {shown}"
+
+
+def _quoted_files(offset: int, list_files: FileLister | None) -> list[Completion]:
+    """File names behind `use` and `read`, with the quotation marks that they need."""
+    if list_files is None:
+        return []
+    return [
+        Completion(name, f'"{name}', "folder", "a folder", offset)
+        if name.endswith("/")
+        else Completion(name, f'"{name}"', "file", "a script", offset)
+        for name in list_files("")
+    ]
 
 
 def _files(

@@ -29,7 +29,7 @@ CODES: dict[str, str] = {
     "chained-power": "Powers stand on each other without parentheses.",
     "reserved-word": "A word of the language stands where a name is due.",
     # Found when a sentence is checked or run.
-    "not-available-yet": "The sentence is part of the language, but nothing here runs it yet.",
+    "no-rule-known": "The sentence has a meaning, but no rule is known here that carries it out.",
     "unknown-name": "A name is not defined.",
     "unknown-setting": "A `fix` names no setting.",
     "unknown-form": "A `show` or `write` names no form.",
@@ -57,6 +57,7 @@ CODES: dict[str, str] = {
     "too-large": "A result would be too large to compute.",
     "over-budget": "A sentence reached its limit of time, terms or memory.",
     "stopped": "A sentence was stopped on request.",
+    "workers-lost": "The processes that worked on the cases of a sentence went away.",
     "claim-failed": "A claimed identity does not hold.",
     "undecided": "Whether an identity holds could not be decided.",
     "unreadable-file": "A file cannot be read.",
@@ -69,6 +70,10 @@ CODES: dict[str, str] = {
 }
 
 MAX_COLUMNS = 100
+MAX_MESSAGE = 800
+"""A longer message is cut in the middle."""
+MAX_HINT = 400
+"""A longer hint is left out: half of what would be right is wrong."""
 TAB_WIDTH = 4
 
 
@@ -81,6 +86,15 @@ class Diagnostic:
     span: Span
     message: str
     hints: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        # names and indices of any length may stand in a message
+        if len(self.message) > MAX_MESSAGE:
+            cut = f"{self.message[: MAX_MESSAGE // 2]} … {self.message[-MAX_MESSAGE // 4 :]}"
+            object.__setattr__(self, "message", cut)
+        if any(len(hint) > MAX_HINT for hint in self.hints):
+            kept = tuple(hint for hint in self.hints if len(hint) <= MAX_HINT)
+            object.__setattr__(self, "hints", kept)
 
 
 def error(code: str, span: Span, message: str, *hints: str) -> Diagnostic:

@@ -40,13 +40,16 @@ def signature(text: str, offset: int, scope: Scope) -> Signature | None:
         found = _signature_of(lexemes, at, scope)
         if found is not None:
             return found
+    closed = _head_of_closed(lexemes, offset)
+    if closed is not None:
+        return _signature_of(lexemes, closed, scope)
     for place, part in _open_brackets(lexemes, offset):
         head = _head(lexemes, place)
         if head is not None:
             found = _signature_of(lexemes, head, scope)
             if found is not None:
                 return Signature(found.label, found.meaning, part)
-    if lexemes and lexemes[0].start < offset:
+    if lexemes and lexemes[0].start < offset and lexemes[0].type != "NAME":
         return _signature_of(lexemes, 0, scope)
     return None
 
@@ -56,6 +59,10 @@ def hover(parsed: Parsed, offset: int, scope: Scope) -> Hover | None:
     text = parsed.source.text
     lexemes = _sentence_around(scan(text), offset)
     at = _word_at(lexemes, offset)
+    if at is None:
+        at = _head_of_closed(lexemes, offset)
+    if at is None:
+        at = _head_of_subscript(lexemes, offset)
     if at is None:
         return None
     word = lexemes[at]
@@ -136,6 +143,27 @@ def _open_brackets(lexemes: list[Lexeme], offset: int) -> list[tuple[int, int]]:
         elif lexeme.type == "COMMA" and stack:
             stack[-1] = (stack[-1][0], stack[-1][1] + 1)
     return stack[::-1]
+
+
+def _head_of_closed(lexemes: list[Lexeme], offset: int) -> int | None:
+    """The name whose subscript or arguments end at an offset."""
+    opened: list[int] = []
+    for place, lexeme in enumerate(lexemes):
+        if lexeme.type in OPENERS:
+            opened.append(place)
+        elif lexeme.type in CLOSERS and opened:
+            opener = opened.pop()
+            if lexeme.end == offset:
+                return _head(lexemes, opener)
+    return None
+
+
+def _head_of_subscript(lexemes: list[Lexeme], offset: int) -> int | None:
+    """The name in whose subscript an offset lies."""
+    for opener, _ in _open_brackets(lexemes, offset):
+        if opener >= 2 and lexemes[opener - 1].type == "UNDERSCORE":
+            return opener - 2
+    return None
 
 
 def _head(lexemes: list[Lexeme], opener: int) -> int | None:

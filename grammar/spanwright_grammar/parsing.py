@@ -519,7 +519,9 @@ def _report_invalid(splitter: _Splitter, lexeme: Lexeme) -> None:
         splitter.report(
             "invalid-character",
             here,
-            f"{shown} has no meaning here",
+            "a byte that is not UTF-8 stands here"
+            if text == "\ufffd"  # what such a byte is read as
+            else f"{shown} has no meaning here",
             *([replacement] if replacement else []),
         )
 

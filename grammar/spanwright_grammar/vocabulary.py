@@ -30,6 +30,23 @@ class Entry:
     inputs: str = ""
 
 
+# The words that a setting may have; numbers are told by the setting's example.
+SETTING_WORDS: dict[str, tuple[str, ...]] = {
+    "convention": ("standard", "reversed"),
+    "hecke": ("plain", "balanced"),
+    "show": ("short", "factored", "expanded"),
+    "certainty": ("exact", "random"),
+}
+# The forms of `show … as` and `write … as`, and what each is for.
+FORMS: dict[str, str] = {
+    "text": "the language itself: pastes back",
+    "latex": "for a paper",
+    "json": "for programs",
+    "html": "for a page",
+    "sympy": "for sympy, which reads it back",
+    "csv": "for a table, one row a term",
+}
+
 _PRACTICE = "common practice"
 _OURS = "ours"
 _SYMMETRIC = "I. G. Macdonald, Symmetric Functions and Hall Polynomials, 2nd edition, 1995"
@@ -227,13 +244,11 @@ VOCABULARY: tuple[Entry, ...] = (
         "hooks((2,1,0))", _SYMMETRIC, inputs="a composition",
     ),
     Entry(
-        "kostka", "function", "kostka(lambda, mu)", "the number of semistandard tableaux",
-        "kostka((2,1), (1,1,1))", _SYMMETRIC, inputs="two partitions of one size",
-    ),
-    Entry(
-        "qtkostka", "function", "qtkostka(lambda, mu)",
-        "the q,t-Kostka polynomial, the coefficient of a plethystic Schur function in J_mu",
-        "qtkostka((2,1), (1,1,1))", _SYMMETRIC, inputs="two partitions of one size",
+        "kostka", "function", "kostka(lambda, mu), kostka(lambda, mu, q, t)",
+        "the number of semistandard tableaux; with one scalar behind it the Kostka-Foulkes "
+        "polynomial there, with two the q,t-Kostka polynomial",
+        "kostka((2,1), (1,1,1), q, t)", _SYMMETRIC,
+        inputs="two partitions of one size, and the values of the parameters",
     ),
     Entry(
         "jack", "function", "jack(lambda)", "Jack polynomial with parameter alpha",
@@ -335,15 +350,15 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "q", "setting", "fix q = c", "gives q a value everywhere",
-        "fix q = 0", _PRACTICE, inputs="a scalar",
+        "fix q = 0", _PRACTICE, inputs="a scalar, or free",
     ),
     Entry(
         "t", "setting", "fix t = c", "gives t a value everywhere",
-        "fix t = q^2", _PRACTICE, inputs="a scalar",
+        "fix t = q^2", _PRACTICE, inputs="a scalar, or free",
     ),
     Entry(
         "basis", "setting", "fix basis = B", "the family in which results are expanded",
-        "fix basis = E", _PRACTICE, inputs="a family",
+        "fix basis = E", _PRACTICE, inputs="a family, x, or free",
     ),
     Entry(
         "convention", "setting", "fix convention = word", "which published convention E_mu follows",
@@ -363,7 +378,7 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "seconds", "setting", "fix seconds = k", "the time that a sentence may take",
-        "fix seconds = 60", _OURS, inputs="a number of seconds",
+        "fix seconds = 60", _OURS, inputs="a number of seconds, or free",
     ),
     Entry(
         "terms", "setting", "fix terms = k", "the number of terms that a result may have",
@@ -371,7 +386,7 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "memory", "setting", "fix memory = k GB", "the memory that a sentence may take",
-        "fix memory = 2 GB", _OURS, inputs="a number with MB or GB",
+        "fix memory = 2 GB", _OURS, inputs="a number with MB or GB, or free",
     ),
     Entry(
         "jobs", "setting", "fix jobs = k", "how many cases are worked on at once",
@@ -436,12 +451,12 @@ VOCABULARY: tuple[Entry, ...] = (
     ),
     Entry(
         "show", "sentence", "show f as form", "shows the whole of a value in another form",
-        "show E_(1,0) as latex", _OURS, inputs="the forms text, latex, json, html",
+        "show E_(1,0) as latex", _OURS, inputs=f"the forms {', '.join(FORMS)}",
     ),
     Entry(
         "write", "sentence", "write f as form to \"file\"", "writes a value to a file",
         'write E_(1,0) as latex to "f.tex"', _OURS,
-        inputs="the forms text, latex, json, html, csv, sympy",
+        inputs=f"the forms {', '.join(FORMS)}",
     ),
     Entry(
         "use", "sentence", "use \"file\"", "runs another script first, once",
@@ -569,3 +584,25 @@ def lookup_all(name: str) -> tuple[Entry, ...]:
 def by_kind(kind: str) -> tuple[Entry, ...]:
     """The entries of one kind, in the order of the table."""
     return tuple(entry for entry in VOCABULARY if entry.kind == kind)
+
+
+def words_like(name: str) -> list[str]:
+    """The words that a misspelt name can have meant, near or not.
+
+    Words of one letter only for a name of one letter: they are like all short names. A sentence
+    word only with the name's first letter and about its length: many names are like one by chance.
+    """
+    return [
+        entry.name
+        for entry in VOCABULARY
+        if (
+            entry.kind in ("family", "operator", "function", "set", "parameter")
+            and (len(entry.name) > 1 or len(name) == 1)
+        )
+        or (
+            entry.kind == "sentence"
+            and len(entry.name) > 3
+            and entry.name[0] == name[:1]
+            and abs(len(entry.name) - len(name)) < 2
+        )
+    ]

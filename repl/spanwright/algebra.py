@@ -6,7 +6,7 @@ the same tree can be evaluated over a finite field for a first, cheap answer.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from fractions import Fraction
 from typing import Any, Protocol
 
@@ -67,6 +67,13 @@ class ExactAlgebra:
         self._ring = context.ring
 
     # constants and elements
+
+    def _contained_in(self, whole: IndexSet) -> Callable[[Any], bool]:
+        def is_contained(member: Any) -> bool:
+            self.check_budget()
+            return whole.contains(member)
+
+        return is_contained
 
     def check_budget(self) -> None:
         """Raise OverBudget when the sentence must stop."""
@@ -177,6 +184,8 @@ class ExactAlgebra:
                 return _scaled_operator(b, scalar)
             if isinstance(a, LaurentPolynomial | Expansion):
                 return self._as_multiplier(a, b)
+            if is_index(a) and indices.is_permutation(a) and len(a) <= b.n:
+                return self.operator("s", indices.extended(a, b.n), b.n) * _as_word(b)
             raise Mixed(f"{kind_name(a)} does not multiply an operator")
         if isinstance(a, tuple) or isinstance(b, tuple):
             return self._index_product(a, b)
@@ -239,7 +248,7 @@ class ExactAlgebra:
             return Truth(len(a.items) == len(b.items) and all(
                 self.equal(u, v).holds for u, v in zip(a.items, b.items, strict=True)))
         if isinstance(a, IndexSet) and isinstance(b, IndexSet):
-            return Truth(list(a) == list(b))
+            return Truth(a.size() == b.size() and all(map(self._contained_in(b), a)))
         if isinstance(a, str) and isinstance(b, str):
             return Truth(a == b)
         if is_operator(a) or is_operator(b):

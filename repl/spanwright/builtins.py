@@ -18,7 +18,6 @@ from spanwright.values import (
     IndexSet,
     ListValue,
     as_scalar,
-    is_element,
     is_index,
     kind_name,
 )
@@ -88,16 +87,6 @@ def _checked_permutation(e: Evaluation, node: syntax.Node) -> tuple[int, ...]:
     return found
 
 
-def element_argument(e: Evaluation, node: syntax.Node) -> Any:
-    """An argument that must be a scalar, polynomial or expansion."""
-    value = e.value(node)
-    if not is_element(value):
-        raise failure("wrong-kind", node.place,
-                      f"a polynomial or an expansion is needed here; this is {kind_name(value)}")
-    scalar = as_scalar(value)
-    return value if scalar is None else scalar
-
-
 def scalar_argument(e: Evaluation, node: syntax.Node) -> Any:
     """An argument that must be a scalar."""
     value = e.value(node)
@@ -112,7 +101,7 @@ def scalar_argument(e: Evaluation, node: syntax.Node) -> Any:
 
 
 def _degree(e: Evaluation, node: syntax.Call) -> Any:
-    value = element_argument(e, node.arguments[0])
+    value = theory.element_argument(e, node.arguments[0])
     polynomial = reduction.to_polynomial(value, e.n or 1)
     if polynomial.is_zero:
         raise failure("wrong-kind", node.place, "the zero polynomial has no degree")
@@ -120,14 +109,14 @@ def _degree(e: Evaluation, node: syntax.Call) -> Any:
 
 
 def _support(e: Evaluation, node: syntax.Call) -> Any:
-    value = element_argument(e, node.arguments[0])
+    value = theory.element_argument(e, node.arguments[0])
     if isinstance(value, Expansion | LaurentPolynomial):
         return ListValue(tuple(value.support()))
     return ListValue(((0,) * (e.n or 1),) if not value.is_zero else ())
 
 
 def _leading(e: Evaluation, node: syntax.Call) -> Any:
-    value = element_argument(e, node.arguments[0])
+    value = theory.element_argument(e, node.arguments[0])
     if not isinstance(value, Expansion | LaurentPolynomial) or value.is_zero:
         raise failure("wrong-kind", node.place, "a nonzero polynomial or expansion is needed")
     index = value.support()[0]
@@ -312,7 +301,7 @@ _TABLE: dict[str, tuple[int, int, Builtin]] = {
     "compositions": (1, 1, _compositions), "partitions": (1, 1, _partitions),
     "norm": (1, 1, theory.norm), "inner": (2, 2, theory.inner),
     "principal": (1, 1, theory.principal), "hooks": (1, 1, theory.hooks),
-    "kostka": (2, 2, theory.kostka), "qtkostka": (2, 2, theory.qtkostka),
+    "kostka": (2, 4, theory.kostka),
     "jack": (1, 1, theory.jack), "symmetric": (1, 1, theory.symmetric),
     "positive": (1, 2, theory.positive), "stable": (1, 1, theory.stable),
     "commutator": (2, 2, theory.commutator), "eigenvalue": (2, 2, theory.eigenvalue),

@@ -31,7 +31,7 @@ HELD, FAILED, UNDECIDED, DONE, SKIPPED = "held", "failed", "undecided", "done", 
 
 STATIC = frozenset({
     "unknown-name", "ring-not-fixed", "name-taken", "not-a-function", "wrong-kind",
-    "wrong-number-of-arguments", "unknown-setting", "unknown-form", "not-available-yet",
+    "wrong-number-of-arguments", "unknown-setting", "unknown-form", "no-rule-known",
     "unexpected-text"})
 """Faults of the sentence rather than of a case: met in the first case, they end the run."""
 
@@ -150,7 +150,7 @@ def number_of_cases(steps: Plan, context: Context) -> int | None:
 
 def with_bound(context: Context, bound: dict[str, Any]) -> Context:
     """The context of a case."""
-    return replace(context, names={**context.names, **bound})
+    return replace(context, local={**context.local, **bound})
 
 
 class CaseRunner:

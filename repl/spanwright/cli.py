@@ -6,6 +6,7 @@ Exit status 0 when every sentence succeeded and every claim holds, 1 when not, 2
 from __future__ import annotations
 
 import argparse
+import contextlib
 import json
 import os
 import sys
@@ -35,6 +36,12 @@ def main(arguments: Sequence[str] | None = None) -> int:
         # the reader of the pipe has gone; nothing can be said to it any more
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return FAILED
+    except OSError as error:
+        # what reads and writes files answers for them itself; what is left is the output
+        with contextlib.suppress(OSError):
+            print(f"spanwright: {(error.strerror or str(error)).lower()}", file=sys.stderr)
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return USAGE
     except KeyboardInterrupt:
         print("stopped", file=sys.stderr)
         return 130
@@ -95,7 +102,7 @@ def _parser() -> argparse.ArgumentParser:
 def _editor_parsers(commands: Any) -> None:
     """The parsers of `serve`, `check` and `format`."""
     serve = commands.add_parser("serve", help="be a language server, on standard input and output")
-    serve.add_argument("--tcp", type=int, metavar="PORT", help="listen on this loopback port")
+    serve.add_argument("--tcp", type=_port, metavar="PORT", help="listen on this loopback port")
     check = commands.add_parser("check", help="say what is wrong with scripts, running nothing")
     check.add_argument("files", nargs="+", metavar="FILE", help="a script, or - for standard input")
     check.add_argument(
@@ -111,7 +118,8 @@ def _many_cases_options(run: argparse.ArgumentParser) -> None:
     run.add_argument(
         "--jobs", type=int, metavar="N", help="work on so many cases of a `for` at once")
     run.add_argument(
-        "--cluster", metavar="ADDRESS", help="send cases to the scheduler at this address")
+        "--cluster", metavar="ADDRESS", help="send cases to the scheduler at this address; "
+        "without --resume, finished ones are kept beside the script")
     run.add_argument(
         "--resume", dest="kept", metavar="FILE",
         help="keep finished cases in this file, and skip those that it holds")
@@ -192,6 +200,12 @@ def _serve(options: argparse.Namespace) -> int:
     return editor_commands.serve(options.tcp)
 
 
+def _port(text: str) -> int:
+    if not (text.isascii() and text.isdigit() and len(text) < 6 and int(text) < 2**16):
+        raise argparse.ArgumentTypeError(f"a port is a number from 0 to 65535, not {text[:20]!r}")
+    return int(text)
+
+
 def _check(options: argparse.Namespace) -> int:
     from spanwright import editor_commands
 
@@ -255,7 +269,7 @@ def _run_sources(
             if journal is None:
                 return USAGE
         conversation = local(
-            Folder(root, options.allow_outside), means=_means(options),
+            Folder(root, options.allow_outside), means=_means(options, name),
             is_digested=journal is not None)
         try:
             faults += _run_one(conversation, name, text, options, journal)
@@ -285,12 +299,17 @@ def _new_log(name: str) -> Journal | None:
         return None
 
 
-def _means(options: argparse.Namespace) -> dict[str, Any]:
-    """The options for many cases as plain data."""
+def _means(options: argparse.Namespace, name: str) -> dict[str, Any]:
+    """The options for many cases of a script as plain data."""
     if options.command != "run":
         return {}
+    kept = options.kept
+    if kept is None and options.cluster is not None:
+        # a scheduler may go away: what it has finished is never lost
+        kept = "cases.jsonl" if name == "-" else str(Path(name).with_suffix(".cases.jsonl"))
+        _complain(f"spanwright: finished cases are kept in {kept}")
     given = {
-        "jobs": options.jobs, "cluster": options.cluster, "kept": options.kept,
+        "jobs": options.jobs, "cluster": options.cluster, "kept": kept,
         "only_failed": options.only_failed, "case_seconds": options.case_seconds,
         "stops_at_first": options.stop_at_first}
     return {name: value for name, value in given.items() if value}
@@ -319,7 +338,9 @@ def _run_one(
             if record["code"] == "stopped":
                 raise KeyboardInterrupt
         elif reply.status != "ok":
-            yield Fault(name, reply.line, reply.column, "the claim does not hold")
+            is_open = reply.kind == "tally" and "fails" not in reply.text.split("\n")
+            yield Fault(name, reply.line, reply.column, "not every case was decided" if is_open
+                        else "the claim does not hold")
 
 
 def _tell_progress() -> Callable[[Progress], None]:

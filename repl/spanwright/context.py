@@ -42,7 +42,10 @@ def failure(code: str, span: Span, message: str, *hints: str) -> Failure:
 
 @dataclass(frozen=True, slots=True)
 class Function:
-    """What `let c(a,b) = …` and `let F_mu = …` define; `text` is the sentence as it was typed."""
+    """What `let c(a,b) = …` and `let F_mu = …` define; `text` is the sentence as it was typed.
+
+    `local` are the values of the case in which it was defined: nothing, outside a `for`.
+    """
 
     name: str
     parameters: tuple[str, ...]
@@ -50,20 +53,28 @@ class Function:
     is_family: bool
     is_whole_index: bool
     text: str
+    local: Mapping[str, Any] = field(default_factory=dict, compare=False)
 
 
 @dataclass(frozen=True, slots=True)
 class Context:
-    """All that a sentence may look up; frozen, a new one for every change."""
+    """All that a sentence may look up; frozen, a new one for every change.
+
+    `local` are the values of a case, before all names; functions of one's own do not see them.
+    """
 
     settings: Settings = field(default_factory=Settings)
     names: Mapping[str, Any] = field(default_factory=dict)
     parameters: tuple[str, ...] = ()
     results: Mapping[int, Any] = field(default_factory=dict)
+    local: Mapping[str, Any] = field(default_factory=dict)
 
     def with_name(self, name: str, value: Any) -> Context:
         """With one more definition."""
-        return replace(self, names={**self.names, name: value})
+        local = self.local
+        if name in local:
+            local = {known: v for known, v in local.items() if known != name}
+        return replace(self, names={**self.names, name: value}, local=local)
 
     @property
     def ring(self) -> ParameterRing:

@@ -92,18 +92,22 @@ class LocalConversation:
 
 def local(
     folder: Folder | None = None, *, means: dict[str, Any] | None = None,
-    is_digested: bool = False,
+    is_digested: bool = False, bounds: dict[str, Any] | None = None,
 ) -> Conversation:
     """A conversation on this machine, in an evaluator process where the system has fork.
 
     `means` says how many cases are run at once and by whom: the fields of `Means`, plain. With
-    `is_digested` replies carry the digest that logs record.
+    `is_digested` replies carry the digest that logs record. `bounds` are what no sentence may
+    lift: the fields of `Bounds`, plain.
     """
     place = folder or Folder(Path.cwd())
     if hasattr(os, "fork"):
         from spanwright.process import ProcessConversation
 
-        return ProcessConversation(place, means=means, is_digested=is_digested)
+        return ProcessConversation(
+            place, means=means, is_digested=is_digested, bounds=bounds)
     from spanwright.session import Session
+    from spanwright.settings import Bounds
 
-    return LocalConversation(Session(folder=place), is_digested=is_digested)
+    session = Session(folder=place, bounds=Bounds(**(bounds or {})))
+    return LocalConversation(session, is_digested=is_digested)

@@ -15,7 +15,7 @@ from spanwright.kernel.families.registry import family
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import scalar_text
 from spanwright.rendering.text import element_text, text
-from spanwright.values import Table, is_operator
+from spanwright.values import Table, is_operator, single_element
 from spanwright_grammar import syntax
 
 MONK_REFERENCE = (
@@ -39,12 +39,12 @@ def derive(node: syntax.Derive, evaluator: Evaluator) -> Table:
         left = value if left is None else evaluator.algebra.multiply(value, left)
     if is_operator(right):
         return _operator_steps(evaluator.value(expression), node, evaluator)
-    element = _element(right)
+    element = single_element(right)
     if element is None:
         raise _no_rule(node)
     try:
         if is_operator(left):
-            found = _operator_on(left, *element)
+            found = _operator_on(left, right, *element)
         else:
             found = _product(left, right, *element, evaluator.require_n(node))
     except KernelError as error:
@@ -54,18 +54,9 @@ def derive(node: syntax.Derive, evaluator: Evaluator) -> Table:
     return found
 
 
-def _element(value: Any) -> tuple[str, tuple[int, ...]] | None:
-    """Family symbol and index of one basis element with coefficient 1, else None."""
-    if isinstance(value, Expansion) and len(value) == 1:
-        ((index, c),) = value.terms.items()
-        if c == 1:
-            return value.family.name, index
-    return None
-
-
 def _no_rule(node: syntax.Derive) -> Exception:
     return failure(
-        "not-available-yet", node.expression.place,
+        "no-rule-known", node.expression.place,
         "no closed rule is known here for this: derive takes a generator, e_r, h_r or a basis "
         "element times a basis element, a change of basis, or an operator word",
         "derive x_2 E_(1,0,2)", "derive kappa_(0,2,1) in atom")
@@ -75,7 +66,7 @@ def _of_one(value: Any, node: syntax.Derive, evaluator: Evaluator) -> Table:
     """An operator word, or one basis element written in others."""
     if is_operator(value):
         return _operator_steps(value, node, evaluator)
-    element = _element(value)
+    element = single_element(value)
     if element is None:
         raise _no_rule(node)
     name, index = element
@@ -106,8 +97,56 @@ def _shown(name: str, value: Expansion) -> str:
     return element_text(name, value.family.show_index(index, value.n))
 
 
-def _operator_on(operator: Any, name: str, index: tuple[int, ...]) -> Table | None:
-    """pi_i kappa_alpha."""
+_WITH_Z = "z = u_i/u_(i+1), u_i = q^(mu_i) t^(v_mu(i)), v_mu(i) the place of mu_i in mu sorted"
+_RULES_ON_E = {
+    ("T", 1): "T_i E_mu = t E_mu when mu_i = mu_(i+1), else c E_(s_i mu) - (1 - t)/(1 - z) E_mu, "
+              "c = 1 when mu_i > mu_(i+1), else (1 - t z) (t - z)/(1 - z)^2; " + _WITH_Z,
+    ("T", -1): "T_i^-1 = (T_i + 1 - t)/t, and T_i E_mu = t E_mu when mu_i = mu_(i+1), else "
+               "c E_(s_i mu) - (1 - t)/(1 - z) E_mu, c = 1 when mu_i > mu_(i+1), else "
+               "(1 - t z) (t - z)/(1 - z)^2; " + _WITH_Z,
+    ("Y", 1): "Y_i E_mu = q^(-mu_i) t^(n - v_mu(i)) E_mu, v_mu(i) the place of mu_i in mu sorted",
+    ("tau", 1): "tau_i E_mu = 0 when mu_i = mu_(i+1), else c E_(s_i mu), c = 1 when "
+                "mu_i > mu_(i+1), else (1 - t z) (t - z)/(1 - z)^2; " + _WITH_Z,
+    ("tau_pi", 1): "tau_pi E_mu = q^(-mu_n) E_(mu_n + 1, mu_1, ..., mu_(n-1))",
+}
+_BALANCED = "; balanced: T_i and tau_i over t^(1/2), Y_i over t^((n-1)/2)"
+_ON_E_REFERENCE = (
+    "I. Cherednik, Double Affine Hecke Algebras (2005); F. Knop, S. Sahi, A recursion and a "
+    "combinatorial formula for Jack polynomials (1997)")
+
+
+def _letter_on_macdonald(operator: Any, right: Expansion, index: tuple[int, ...]) -> Table | None:
+    """T_i^(+-1), X_i^(+-1), Y_i, tau_i or tau_pi on E_mu: the rule, and what it gives here."""
+    from spanwright.kernel.operators.actions import act
+    from spanwright.rendering.operators import operator_text
+
+    ((word, coefficient),) = operator.terms.items()
+    (letter,) = word
+    if letter.kind == "X" and coefficient == 1 and sum(map(abs, letter.subscript)) == 1:
+        j = next(k for k, e in enumerate(letter.subscript, 1) if e)
+        return _monk_table(index, j, letter.subscript[j - 1])
+    rule = _RULES_ON_E.get((letter.kind, letter.power))
+    if rule is None or (letter.kind == "T" and letter.simple_position() is None) or (
+            letter.kind == "Y" and len([e for e in letter.subscript if e]) != 1):
+        return None
+    found = act(operator, right)
+    order = family("E").order_key
+    rows = tuple(
+        (element_text("E", mu), text(c))
+        for mu, c in sorted(found.terms.items(), key=lambda item: order(item[0])))
+    suffix = _BALANCED if operator.normalisation == "balanced" else ""
+    return Table(
+        ("target", "coefficient"), rows or ((element_text("E", index), "0"),),
+        f"{operator_text(operator)} {element_text('E', index)}",
+        (f"rule: {rule}{suffix}", f"source: {_ON_E_REFERENCE}"))
+
+
+def _operator_on(
+    operator: Any, right: Expansion, name: str, index: tuple[int, ...]
+) -> Table | None:
+    """pi_i kappa_alpha, T_i E_mu and its kin."""
+    if name == "E" and len(operator.terms) == 1 and all(len(w) == 1 for w in operator.terms):
+        return _letter_on_macdonald(operator, right, index)
     if name == "kappa" and operator.kinds() == {"pi"} and len(operator.terms) == 1:
         ((word, c),) = operator.terms.items()
         position = word[0].simple_position() if len(word) == 1 else None
@@ -125,7 +164,7 @@ def _product(
 ) -> Table | None:
     """A generator, an e_r, h_r, or a basis element times a basis element."""
     generator = _generator(left)
-    factor = _element(left)
+    factor = single_element(left)
     head = f"{_left_text(left)} {_shown(name, right)}"
     if name == "E":
         return _times_macdonald(left, generator, factor, index, n, head)
@@ -331,6 +370,7 @@ def _rows_table(rows: list[macdonald.MonkRow], caption: str) -> Table:
 
 
 def _operator_steps(value: Any, node: syntax.Derive, evaluator: Evaluator) -> Table:
+    from spanwright.kernel.operators.derivation import SOURCES
     from spanwright.kernel.operators.derivation import derive as derive_steps
     from spanwright.rendering.operators import operator_text
 
@@ -341,4 +381,8 @@ def _operator_steps(value: Any, node: syntax.Derive, evaluator: Evaluator) -> Ta
         raise evaluator.placed(error, node.expression) from error
     rows = tuple(
         (step.relation, operator_text(step.before), operator_text(step.after)) for step in steps)
-    return Table(("relation", "before", "after"), rows, "straightening, step by step")
+    used = {step.relation for step in steps}
+    sources = "; ".join(source for relation, source in SOURCES.items() if relation in used)
+    return Table(
+        ("relation", "before", "after"), rows, "straightening, step by step",
+        (f"source: {sources}",) if sources else ())

@@ -2,9 +2,10 @@
 
 A composition's diagram has one column of boxes for each part, a partition's one row (French
 and English papers differ; rows go down here). Each box holds its arm and leg, as in the norm
-formulas of nonsymmetric Macdonald polynomials (Haglund, Haiman, Loehr 2008, section 3). A
-permutation is drawn as its Rothe diagram (Rothe 1800; Macdonald, Notes on Schubert polynomials,
-1991): dots at (i, w(i)), boxes where a row and a column run on before both meet a dot.
+formulas of nonsymmetric Macdonald polynomials (Haglund, Haiman, Loehr, A combinatorial formula for
+nonsymmetric Macdonald polynomials, 2008, section 3). A permutation is drawn as its Rothe diagram
+(Macdonald, Notes on Schubert Polynomials, 1991): dots at (i, w(i)), boxes where a row
+and a column run on before both meet a dot.
 """
 
 from __future__ import annotations

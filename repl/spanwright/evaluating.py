@@ -17,7 +17,6 @@ pipes closes, whatever ended it. Systems without prctl lose only what these two 
 from __future__ import annotations
 
 import contextlib
-import ctypes
 import gc
 import json
 import os
@@ -32,25 +31,27 @@ from pathlib import Path
 from typing import Any, NoReturn
 
 from spanwright import means
+from spanwright.confinement import (
+    adopt_orphans,
+    default_memory,
+    end_with_parent,
+    mapped_memory,
+    outlive_parent,
+)
 from spanwright.context import Failure, failure
 from spanwright.crashes import MemoryLimit, crash, so_far, too_much_memory
 from spanwright.files import Folder
 from spanwright.frames import HEADER, encoded, read_exactly, receive, write_all
 from spanwright.kernel import budget
 from spanwright.means import Means
+from spanwright.quick import is_quick
 from spanwright.session import Outcome, Session
+from spanwright.settings import Bounds
 from spanwright_grammar import syntax
 from spanwright_grammar.parsing import Chunk, parse
 from spanwright_grammar.source import Source, Span
 
 REQUESTS, STANDARD_OUTPUT, ERRORS = 0, 1, 2
-PR_SET_PDEATHSIG, PR_SET_CHILD_SUBREAPER = 1, 36
-
-# Sentences that look names up and nothing else: a checkpoint would cost more than they do.
-QUICK = (
-    syntax.LetFunction, syntax.LetFamily, syntax.LetParameters, syntax.Remark, syntax.Help,
-    syntax.Quit,
-)
 
 NOTES_APART = 0.2
 """Seconds between two notes on what has been reached."""
@@ -138,7 +139,7 @@ class CheckpointedSession(Session):
             "source": source.slice(chunk.span).strip()[:MOST_SHOWN]}}), self.frames)
         if chunk.sentence is not None and self._must_stop():
             outcome = self._undone(source, chunk, "stopped", "stopped")
-        elif chunk.sentence is None or isinstance(chunk.sentence, QUICK):
+        elif chunk.sentence is None or is_quick(chunk.sentence, self.context):
             outcome = self._run_chunk(source, chunk)
         else:
             return self._at_checkpoint(source, chunk)
@@ -189,7 +190,7 @@ class CheckpointedSession(Session):
     def _as_child(
         self, source: Source, chunk: Chunk, links: _Links, limit: MemoryLimit, holder: int
     ) -> str:
-        _die_with_parent(holder)
+        end_with_parent(holder)
         limits = resource.getrlimit(resource.RLIMIT_AS)
         self._links, self._limit, self._dying = links, limit, ()
         self._last_note, self._reached = 0.0, ""
@@ -216,7 +217,7 @@ class CheckpointedSession(Session):
             write_all(b"E" + frame, links.notes)
             os._exit(0)
         resource.setrlimit(resource.RLIMIT_AS, limits)
-        _outlive_parent()
+        outlive_parent()
         write_all(b"D", links.notes)
         if os.read(links.answers, 1) != b"G":
             os._exit(1)
@@ -227,9 +228,11 @@ class CheckpointedSession(Session):
 
     def guarded(self, sentence: syntax.Sentence, action: Callable[[], Any]) -> Any:
         """Carry `action` out with the clock left to the parent, which needs no help to stop it."""
-        limits = replace(budget.current(), is_spent=_never, report=self._report)
+        limits = replace(
+            budget.current(), is_spent=_never, report=self._report,
+            max_bytes=self.context.settings.memory or self.usual_memory)
         try:
-            by = replace(self.means, progress=self._report)
+            by = replace(self.means, progress=self._report, folder=self.folder)
             with budget.using(limits), means.using(by):
                 return action()
         except MemoryError as error:
@@ -372,11 +375,10 @@ class CheckpointedSession(Session):
         """What the next sentence may take: what is mapped now, and the budget."""
         amount = self.context.settings.memory or self.usual_memory
         try:
-            pages = int(Path("/proc/self/statm").read_text().split()[0])
+            mapped = mapped_memory()
         except (OSError, ValueError):
             # this system does not say, and does not hold anybody to such a bound either
             return MemoryLimit(amount, None)
-        mapped = pages * os.sysconf("SC_PAGE_SIZE")
         hard = resource.getrlimit(resource.RLIMIT_AS)[1]
         if hard != resource.RLIM_INFINITY and hard < mapped + amount:
             return MemoryLimit(max(0, hard - mapped), hard, is_systems=True)
@@ -414,32 +416,6 @@ def _forget_errors() -> None:
         os.lseek(ERRORS, 0, os.SEEK_SET)
 
 
-def _prctl(option: int, value: int) -> None:
-    if _library is not None:
-        _library(option, value, 0, 0, 0)
-
-
-def _find_prctl() -> Any:
-    try:
-        return ctypes.CDLL(None).prctl
-    except (OSError, AttributeError):
-        return None
-
-
-_library = _find_prctl()
-
-
-def _die_with_parent(parent: int) -> None:
-    _prctl(PR_SET_PDEATHSIG, signal.SIGKILL)
-    if os.getppid() != parent:
-        # it died before it could be told
-        os._exit(1)
-
-
-def _outlive_parent() -> None:
-    _prctl(PR_SET_PDEATHSIG, 0)
-
-
 def _end_quietly() -> NoReturn:
     """The front end is gone: nobody is left to answer."""
     with contextlib.suppress(OSError):
@@ -447,23 +423,12 @@ def _end_quietly() -> NoReturn:
     os._exit(0)
 
 
-def free_memory() -> int:
-    """The memory that is free now, in bytes; 5 GB where the system does not say."""
-    try:
-        for line in Path("/proc/meminfo").read_text().splitlines():
-            if line.startswith("MemAvailable:"):
-                return int(line.split()[1]) * 1024
-    except (OSError, ValueError):
-        return 5 * 10**9
-    return 5 * 10**9
-
-
 def main() -> None:
     """Serve one front end: `python -m spanwright.evaluating CONTROL-FD GIVEN`, GIVEN as JSON."""
     control, given = int(sys.argv[1]), json.loads(sys.argv[2])
     # the terminal sends its interrupt to the whole group; stopping is the front end's to ask
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    _prctl(PR_SET_CHILD_SUBREAPER, 1)
+    adopt_orphans()
     # an abort under the limits is nothing to keep an image of
     resource.setrlimit(resource.RLIMIT_CORE, (0, resource.getrlimit(resource.RLIMIT_CORE)[1]))
     if os.fork():
@@ -471,14 +436,15 @@ def main() -> None:
     os.set_blocking(control, False)
     output = None if given["output"] is None else Path(given["output"])
     session = CheckpointedSession(
-        folder=Folder(Path(given["root"]), given["allows_outside"], output))
+        folder=Folder(Path(given["root"]), given["allows_outside"], output),
+        bounds=Bounds(**given["bounds"]))
     kept = given["means"].pop("kept", None)
     session.control = control
     session.means = Means(**given["means"], kept=None if kept is None else Path(kept))
     session.is_digested = given["is_digested"]
     session.frames = os.dup(STANDARD_OUTPUT)
     _keep_what_is_printed()
-    session.usual_memory = free_memory() * 4 // 5
+    session.usual_memory = default_memory()
     # the grammar's tables are read at the first use
     parse(Source("1"))
     # what is there for good need not be looked through, nor copied, in every child

@@ -22,9 +22,9 @@ from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.base import Family
 from spanwright.kernel.families.registry import NAMES as FAMILY_NAMES
 from spanwright.kernel.families.registry import family
-from spanwright.kernel.laurent import LaurentPolynomial
+from spanwright.kernel.laurent import LaurentPolynomial, check_product
 from spanwright.kernel.reduction import rewritten_element
-from spanwright.rendering.text import element_text, monomial_text, text
+from spanwright.rendering.text import by_how_much, element_text, monomial_text, text
 from spanwright.values import (
     FamilyMark,
     IndexSet,
@@ -40,11 +40,11 @@ from spanwright_grammar import syntax
 from spanwright_grammar.diagnostics import CODES, Diagnostic
 from spanwright_grammar.source import Span
 from spanwright_grammar.spelling import nearest
-from spanwright_grammar.vocabulary import RESERVED, VOCABULARY, lookup_all
+from spanwright_grammar.vocabulary import RESERVED, lookup_all, words_like
 
 # kernel codes that have another name among the diagnostics
 _CODES = {
-    "outside-domain": "wrong-kind", "mixed": "cannot-combine", "unable": "not-available-yet",
+    "outside-domain": "wrong-kind", "mixed": "cannot-combine", "unable": "no-rule-known",
     "too-many-terms": "too-large", "indeterminate": "pole", "no-root": "not-a-unit",
     "bad-index": "negative-part", "too-many-parts": "wrong-number-of-parts",
     "mixed-parameters": "cannot-combine", "needs-more-variables": "wrong-number-of-parts",
@@ -86,7 +86,8 @@ class Evaluator:
     def __init__(self, context: Context, algebra: Any = None) -> None:
         self.context = context
         self.algebra = algebra if algebra is not None else ExactAlgebra(context)
-        self._local: dict[str, Any] = {}
+        self._local: dict[str, Any] = dict(context.local)
+        self.remark = ""
         self._depth = 0
         self._call_depth = 0
 
@@ -120,6 +121,7 @@ class Evaluator:
             hints = ("fix terms = …   to allow more terms",)
         if not hints and (code != "not-a-unit" or "polynomial" in message):
             hints = _WHAT_IS_RIGHT.get(code, ())
+        message += by_how_much(error)
         shown = Failure(Diagnostic("error", code, node.place, message, tuple(hints)))
         shown.value = getattr(error, "difference", None)
         return shown
@@ -182,10 +184,9 @@ class Evaluator:
     def unknown(self, name: str, span: Span) -> Failure:
         """An unknown name, with the nearest known one."""
         own = [*self._local, *self.context.names, *self.context.parameters]
-        words = [e.name for e in VOCABULARY
-                 if e.kind in ("family", "operator", "function", "set", "parameter")]
         # one's own names first; of the language's words not those of one letter: all are near
-        near = nearest(name, own) or nearest(name, [word for word in words if len(word) > 1])
+        words = [word for word in words_like(name) if len(word) > 1]
+        near = nearest(name, own) or nearest(name, words)
         definition = f"let {name} = …"
         hints = (near, definition) if near else (definition,)
         return failure("unknown-name", span, f"{name} is not defined", *hints)
@@ -285,6 +286,9 @@ class Evaluator:
             return tuple(int(k == j) for k in range(1, n + 1))
         if head == "s":
             at = self.index(node.index, digits=True)
+            if _is_computed(node.index) and isinstance(at, tuple) and len(at) == 1:
+                # s_(i+1) is the reflection, as in the braid relations; s_(2) is a Schur polynomial
+                at = at[0]
             if isinstance(at, int):
                 n = self.require_n(node)
                 return self.algebra.operator("s", self.checked(node, at, n - 1), n)
@@ -414,6 +418,14 @@ class Evaluator:
         at = self.index(at_node, digits=True)
         if isinstance(at, int):
             return self.algebra.operator(head, self.checked(node, at, n - 1), n)
+        if len(at) == 1 and isinstance(at_node, syntax.Group):
+            # T_(i+1) is a position, as x_(i+1) is; as a permutation (1) would be the identity
+            return self.algebra.operator(head, self.checked(node, at[0], n - 1), n)
+        if len(at) == 1 and n > 1:
+            # F_(1) binds the index (1): neither reading may be taken in silence
+            raise failure("wrong-kind", node.place,
+                          f"{head} is subscripted by a position or by a permutation of more than "
+                          f"one letter; this is the index {_shown(at)}", f"{head}_{at[0]}")
         if head == "tau":
             raise failure("wrong-kind", node.place,
                           "tau is subscripted by a position or by pi", "tau_1")
@@ -455,7 +467,7 @@ class Evaluator:
                           f"{function.name} calls itself without end")
         self._call_depth += 1
         saved = self._local
-        self._local = dict(zip(function.parameters, arguments, strict=True))
+        self._local = {**function.local, **dict(zip(function.parameters, arguments, strict=True))}
         try:
             return self.value(function.body)
         except Failure as inner:
@@ -531,6 +543,12 @@ def _shown(index: tuple[int, ...]) -> str:
     return f"({','.join(map(str, index))})"
 
 
+def _is_computed(node: syntax.Node) -> bool:
+    """Whether a subscript is an integer to be computed, as in s_(i+1)."""
+    return isinstance(node, syntax.Group) and isinstance(
+        node.inner, syntax.Sum | syntax.Product)
+
+
 def _near_permutation(index: tuple[int, ...]) -> tuple[int, ...]:
     """The permutation with the same order of entries."""
     order = sorted(range(len(index)), key=lambda k: (index[k], k))
@@ -552,6 +570,8 @@ def _digits_hint(name: str, node: syntax.Node, n: int) -> str | None:
 def _index_hint(name: str, index: tuple[int, ...], n: int, code: str) -> str | None:
     """An index of the same family that would be right."""
     if code == "wrong-number-of-parts":
+        if any(index[n:]):
+            return f"fix n = {len(index)}"
         right = indices.padded(index, n) if len(index) < n else index[:n]
         return f"{name}_{_shown(right)}"
     if code == "not-a-partition":
@@ -635,8 +655,13 @@ def _sum(e: Evaluator, node: syntax.Sum) -> Any:
 def _product(e: Evaluator, node: syntax.Product) -> Any:
     # from the right: an operator acts on everything to its right
     result: Any = None
-    for factor in reversed(node.factors):
-        value = e.value(factor.node)
+    values = [(e.value(factor.node), factor) for factor in reversed(node.factors)]
+    if len(values) > 2 and all(
+        isinstance(value, LaurentPolynomial) and factor.operator != "/" for value, factor in values
+    ):
+        # the first products of many may be work enough, and all for nothing
+        check_product([value for value, _ in values])
+    for value, factor in values:
         try:
             if factor.operator == "/":
                 value = e.algebra.inverse(value)
@@ -801,12 +826,23 @@ def _specialise(e: Evaluator, node: syntax.Specialise) -> Any:
                           "parameters and variables can be given values, nothing else",
                           "f at q = 0", "f at x_1 = 1")
     try:
-        return e.algebra.specialise(operand, parameters, variables)
+        return _noted(
+            e, operand, e.algebra.specialise(operand, parameters, variables), parameters)
     except (Pole, OutsideDomain) as error:
         if not (isinstance(error, Pole) or error.code == "indeterminate"):
             raise
         point = [*parameters.items(), *((f"x_{j}", v) for j, v in sorted(variables.items()))]
         raise _pole(error, operand, parameters, _where(point), node) from error
+
+
+def _noted(e: Evaluator, before: Any, after: Any, names: Iterable[str]) -> Any:
+    """The value after; a remark is left when an expansion had to become a polynomial."""
+    changed = " and ".join(names)
+    if changed and isinstance(before, Expansion) and isinstance(after, LaurentPolynomial):
+        name = before.family.name
+        e.remark = f"in monomials: {'S(x;y)' if name == 'double Schubert' else name} depends " \
+            f"on {changed}"
+    return after
 
 
 def _point(e: Evaluator, node: syntax.Node, n: int) -> list[Any]:
@@ -896,12 +932,14 @@ def _limit(e: Evaluator, node: syntax.Limit) -> Any:
     assert isinstance(variable, syntax.Name)
     name, target = variable.name, e.value(node.target)
     try:
-        return e.algebra.limit(operand, name, target)
+        return _noted(e, operand, e.algebra.limit(operand, name, target), (name,))
     except Pole as error:
         images = {name: target}
         where = _where(images.items())
         if not isinstance(target, Infinity):
-            hint = f"{_vanishing(name, target, error.order)} f as {name} -> {text(target)}"
+            worst = worst_coefficient(operand, images)
+            order = worst[0] if worst else error.order
+            hint = f"{_vanishing(name, target, order)} f as {name} -> {text(target)}"
             raise _pole(error, operand, images, where, node, hint) from error
         # at infinity the order of the pole is that at 0 of the inverse
         inverted = e.algebra.inverse(e.algebra.parameter(name))

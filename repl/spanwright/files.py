@@ -53,8 +53,8 @@ class Folder:
             raise FileRefused("unreadable-file", f"{path} is no file")
         return found, read_text(found, path)
 
-    def write(self, path: str, content: str) -> Path:
-        """Write a file below this folder, or below `output`: whole, or not at all."""
+    def place_to_write(self, path: str) -> Path:
+        """Where a path is written, below this folder or below `output`; raises FileRefused."""
         if self.output is None:
             found = _below(self.root, path, allows_outside=self.allows_outside)
         else:
@@ -65,6 +65,14 @@ class Folder:
         try:
             if self.output is not None:
                 found.parent.mkdir(parents=True, exist_ok=True)
+        except OSError as error:
+            raise FileRefused("unwritable-file", f"{path}: {_reason(error)}") from error
+        return found
+
+    def write(self, path: str, content: str) -> Path:
+        """Write a file at its place: whole, or not at all; raises FileRefused."""
+        found = self.place_to_write(path)
+        try:
             _write_whole(found, content)
         except OSError as error:
             raise FileRefused("unwritable-file", f"{path}: {_reason(error)}") from error

@@ -357,7 +357,7 @@ def _values(node: syntax.Guess, context: Context) -> dict[int, Scalar]:
     if len(values) < FEWEST:
         raise failure("wrong-kind", node.place,
                       f"a guess needs {FEWEST} values, here are {len(values)}",
-                      f"{print_tree(node.expression)} for {name} in 1..8")
+                      f"guess {print_tree(node.expression)} for {name} in 1..8")
     if any(value.ring.has_root for value in values.values()):
         raise failure("wrong-kind", node.place, "values with t^(1/2) are not guessed at")
     return values

@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from spanwright.context import Context, Function
+from spanwright.kernel.coefficients import Scalar
 from spanwright.limits import LIMITS
 from spanwright.rendering.text import text
+from spanwright.settings import Settings
+from spanwright.values import kind_name
 from spanwright_grammar.spelling import nearest
 from spanwright_grammar.vocabulary import VOCABULARY, Entry, by_kind, lookup_all
 
@@ -25,13 +28,36 @@ def page(topic: str | None) -> str | None:
     word = topic.strip()
     if word.lower() in ("limits", "limit"):
         return _limits()
-    entries = lookup_all(word)
+    # an element or an operator with its subscript, as it stands in a formula
+    entries = lookup_all(word) or lookup_all(word.partition("_")[0] if "_" in word else word)
     if entries:
         return "\n\n".join(_entry(e) for e in entries)
     for kind, head in _HEADS.items():
         if word.lower() in (kind, f"{kind}s", head.lower(), "families" if kind == "family" else ""):
             return _listing(kind, head)
     return None
+
+
+def own_page(topic: str, context: Context) -> str | None:
+    """What the session's own name means; None when it has none of this name."""
+    value = context.names.get(topic.strip())
+    if value is None:
+        return None
+    if isinstance(value, Function):
+        return f"defined in this session: {_short(value.text.strip())}"
+    shown = _short(f"{topic.strip()} = {text(value, context.settings.show)}")
+    return f"{kind_name(value)}, defined in this session: {shown}"
+
+
+def setting_line(name: str, settings: Settings) -> str:
+    """A setting and its value, as `fix` answers."""
+    value = getattr(settings, name)
+    if value is None:
+        return f"{name} = free"
+    if name == "memory":
+        unit, size = ("GB", 10**9) if value % 10**9 == 0 else ("MB", 10**6)
+        return f"memory = {value // size} {unit}"
+    return f"{name} = {text(value) if isinstance(value, Scalar) else value}"
 
 
 def nearest_topic(word: str) -> str | None:
@@ -97,6 +123,9 @@ def everything(context: Context) -> str:
     settings = context.settings
     ring = f"n = {settings.n}" if settings.n is not None else "n is not fixed"
     lines = [f"ring: {ring}; {', '.join(('q', 't', *context.parameters))} are parameters"]
+    usual = Settings(n=settings.n)
+    lines += [setting_line(name, settings) for name in Settings.__dataclass_fields__
+              if getattr(settings, name) != getattr(usual, name)]
     for name, value in context.names.items():
         if isinstance(value, Function):
             lines.append(_short(value.text.strip()))

@@ -171,7 +171,7 @@ class Journal:
                     before, behind, place = _around(source, parsed.comments, chunk, place)
                     content = self._composer.prose(before) + self._composer.record(
                         source.slice(chunk.span), reply, chunk.sentence, behind)
-                self.n_records += 1
+                self.n_records += not reply.is_quit  # leaving at once is no reason for a log
                 self._append(content)
             yield item
         rest = [
@@ -264,25 +264,42 @@ def create_default(settings: Iterable[str] = (), folder: Path | None = None) -> 
     raise LogFailure(f"{place} holds too many logs of this second")
 
 
-def interrupted(folder: Path | None = None) -> Path | None:
-    """The last log in a folder, when its session was lost; None when it was left, or still runs."""
+def interrupted(folder: Path | None = None, *, is_last: bool = False) -> Path | None:
+    """The latest log in a folder whose session was lost, not left; None when there is none.
+
+    Sessions that still run do not count. With `is_last` no session may have been left since.
+    """
     place = folder or default_folder()
     try:
-        found = sorted(place.glob(f"*{SUFFIX}"), key=lambda p: (p.stat().st_mtime_ns, p.name))
-        if not found or time.time() - found[-1].stat().st_mtime > OFFERED_FOR:
+        dated = [(path.stat().st_mtime_ns, path.name, path) for path in place.glob(f"*{SUFFIX}")]
+    except OSError:
+        return None
+    for changed, _, path in sorted(dated, reverse=True):
+        if time.time() - changed / 10**9 > OFFERED_FOR:
             return None
-        handle = os.open(found[-1], os.O_RDWR | _CLOEXEC)
+        log = _unlocked(path)
+        if log is None or log.format is None:
+            continue
+        if log.records and not log.is_closed:
+            return path
+        if log.is_closed and is_last:
+            return None
+    return None
+
+
+def _unlocked(path: Path) -> Log | None:
+    """The log in a file that nobody is writing; None when it is being written, or unreadable."""
+    try:
+        handle = os.open(path, os.O_RDWR | _CLOEXEC)
     except OSError:
         return None
     try:
-        _lock(handle, found[-1])
-        log = _read(_all_of(handle), found[-1])
+        _lock(handle, path)
+        return _read(_all_of(handle), path)
     except (LogFailure, OSError):
         return None
     finally:
         os.close(handle)
-    is_lost = log.format is not None and bool(log.records) and not log.is_closed
-    return found[-1] if is_lost else None
 
 
 def rewrite(path: Path, content: str) -> None:

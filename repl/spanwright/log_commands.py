@@ -7,8 +7,10 @@ from __future__ import annotations
 
 import argparse
 import json
+import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -17,6 +19,7 @@ if TYPE_CHECKING:
     from spanwright.files import Folder
     from spanwright.journal import Journal
     from spanwright.replay import Options, Replayed
+    from spanwright.settings import Bounds
 
 OK, FAILED, USAGE = 0, 1, 2
 
@@ -24,6 +27,7 @@ Write = Callable[[str], None]
 Ask = Callable[[str], bool]
 
 _SHOWN_DIFFERENCES = 20
+_SHOWN_ROWS = 40
 
 
 def add_commands(commands: Any) -> None:
@@ -92,11 +96,11 @@ def default_settings() -> tuple[str, ...]:
     return settings_as_sentences(Settings())
 
 
-def open_conversation(folder: Folder) -> Conversation:
-    """A fresh session whose files lie below a folder."""
+def open_conversation(folder: Folder, bounds: Bounds) -> Conversation:
+    """A fresh session whose files lie below a folder, and that keeps to bounds."""
     from spanwright.conversation import local
 
-    return local(folder, is_digested=True)
+    return local(folder, is_digested=True, bounds=asdict(bounds))
 
 
 # --- replay --------------------------------------------------------------------------------------
@@ -104,10 +108,11 @@ def open_conversation(folder: Folder) -> Conversation:
 
 def replay(
     options: argparse.Namespace, write: Write, complain: Write, ask: Ask,
-    opening: Callable[[Folder], Conversation] = open_conversation,
+    opening: Callable[[Folder, Bounds], Conversation] = open_conversation,
 ) -> int:
     """Run logs again; 0 when all agree, 1 when not, 2 when one cannot be read."""
-    from spanwright.replay import Limits, Options, lines_of
+    from spanwright.replay import Options, lines_of
+    from spanwright.settings import Bounds
 
     try:
         only = None if options.only is None else lines_of(options.only)
@@ -117,8 +122,11 @@ def replay(
     if only is not None and options.rewrite:
         complain("spanwright: --only and --rewrite do not go together: a log is renewed whole")
         return USAGE
+    memory = None if options.memory is None else options.memory * 10**6
+    # a stranger's log starts no more processes than there are cores
+    bounds = Bounds(options.seconds, options.terms, memory, os.cpu_count())
     settings = Options(
-        only, Limits(options.seconds, options.terms, options.memory), options.folder,
+        only, bounds, options.folder,
         options.output, options.allow_outside, options.rewrite)
     paths = [Path(name) for name in options.logs]
     if options.jobs == 1 or len(paths) == 1:
@@ -131,7 +139,7 @@ def replay(
 
 
 def _replayed(
-    path: Path, settings: Options, opening: Callable[[Folder], Conversation]
+    path: Path, settings: Options, opening: Callable[[Folder, Bounds], Conversation]
 ) -> tuple[Path, Replayed | str]:
     from spanwright.journal import LogFailure
     from spanwright.replay import replay_file
@@ -176,7 +184,7 @@ def _rewritten(
     question = (f"write {path} anew, with {_count(n_new, 'result')} other than recorded"
                 f"{' and its altered lines as they are now' if replayed.altered else ''}?")
     if not options.yes and not ask(question):
-        return f"{path} is left as it was"
+        return f"{path} is left as it was: only `yes` at a terminal, or --yes, renews it"
     try:
         rewrite(path, replayed.renewed)
     except LogFailure as error:
@@ -210,7 +218,10 @@ def replay_lines(replayed: Replayed) -> list[str]:
         lines.append(printable(f"{name}:{check.line}: {check.verdict}: {shown}{note}"))
         if is_first and check.verdict not in (AGREES, OTHER_FORM):
             is_first = False
-            lines += [f"    {printable(row)}" for row in side_by_side(check.recorded, check.found)]
+            rows = side_by_side(check.recorded, check.found)
+            lines += [f"    {printable(row)}" for row in rows[:_SHOWN_ROWS]]
+            if len(rows) > _SHOWN_ROWS:
+                lines.append(f"    … {len(rows) - _SHOWN_ROWS:,} more rows: --json has all …")
     agreeing = len(replayed.of(AGREES))
     others = [
         f"{len(replayed.of(v)):,} {word}" for v, word in (
@@ -303,5 +314,5 @@ def offer() -> str:
     """What the shell's first line says when the last session was lost, else nothing."""
     from spanwright.journal import interrupted
 
-    found = interrupted()
+    found = interrupted(is_last=True)
     return "" if found is None else f"the last session was lost: spanwright resume {found}"

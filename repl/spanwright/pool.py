@@ -22,7 +22,7 @@ import sys
 import threading
 import time
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any, NoReturn, Protocol
 
 from spanwright import means
@@ -99,7 +99,7 @@ def limited(
             return stopped_after(seconds)
         return is_over() or outer.is_spent()
 
-    with budget.using(budget.Budget(reason, outer.max_terms)):
+    with budget.using(replace(outer, is_spent=reason, report=None)):
         return runner.run(case)
 
 

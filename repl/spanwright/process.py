@@ -49,14 +49,14 @@ class ProcessConversation:
 
     def __init__(
         self, folder: Folder | Path | None = None, *, means: dict[str, Any] | None = None,
-        is_digested: bool = False,
+        is_digested: bool = False, bounds: dict[str, Any] | None = None,
     ) -> None:
-        """`means` are the fields of `spanwright.means.Means` as JSON holds them."""
+        """`means` and `bounds` are the fields of `Means` and of `Bounds` as JSON holds them."""
         place = folder if isinstance(folder, Folder) else Folder(folder or Path.cwd())
         self._given = json.dumps({
             "root": str(place.root), "allows_outside": place.allows_outside,
             "output": None if place.output is None else str(place.output),
-            "means": means or {}, "is_digested": is_digested})
+            "means": means or {}, "is_digested": is_digested, "bounds": bounds or {}})
         self._state = State()
         self._request_id = 0
         self._n_sentences = 0

@@ -10,7 +10,7 @@ import difflib
 import re
 import tempfile
 from collections.abc import Callable, Iterable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -20,6 +20,7 @@ from spanwright.files import Folder
 from spanwright.headers import writer
 from spanwright.log_format import Altered, Composer, Log, Record
 from spanwright.replies import Reply
+from spanwright.settings import Bounds
 from spanwright_grammar import syntax
 from spanwright_grammar.parsing import ParseFailure, parse, parse_expression
 from spanwright_grammar.source import Source
@@ -31,47 +32,6 @@ MISSING = "missing"
 EXTRA = "extra"
 
 FAULTS = (DIFFERS, MISSING, EXTRA)
-
-_LIMITED = ("seconds", "terms", "memory")
-_UNITS = {"kB": 10**3, "MB": 10**6, "GB": 10**9}
-
-
-@dataclass(frozen=True, slots=True)
-class Limits:
-    """Upper bounds for every sentence, whatever the log itself asks for; memory in MB."""
-
-    seconds: int | None = None
-    terms: int | None = None
-    memory: int | None = None
-
-    def sentence(self, name: str) -> str | None:
-        """The `fix` sentence of one bound, None when there is no bound."""
-        bound = getattr(self, name)
-        if bound is None:
-            return None
-        return f"fix {name} = {bound}{' MB' if name == 'memory' else ''}"
-
-    def allows(self, node: syntax.Fix) -> bool:
-        """Whether a `fix` sentence stays below the bounds."""
-        bound = getattr(self, node.setting)
-        amount = _amount(node.value)
-        if bound is None:
-            return True
-        return amount is not None and amount <= bound * (
-            10**6 if node.setting == "memory" else 1)
-
-
-def _amount(node: syntax.Expression) -> int | None:
-    """The number that a `fix` sentence names outright."""
-    if isinstance(node, syntax.Number) and len(node.digits) < 30:
-        return int(node.digits)
-    if isinstance(node, syntax.Product) and len(node.factors) == 2:
-        number, unit = (factor.node for factor in node.factors)
-        if isinstance(unit, syntax.Name) and unit.name in _UNITS:
-            amount = _amount(number)
-            return None if amount is None else amount * _UNITS[unit.name]
-    return None
-
 
 @dataclass(frozen=True, slots=True)
 class Check:
@@ -133,18 +93,18 @@ class Options:
 
     `only` are the lines whose results are compared, all when None. `folder` is where its paths
     start, the log's own when None; `output` takes what it writes, a folder that is thrown away
-    when None.
+    when None. No sentence of the log, nor of a script that it uses, lifts the `bounds`.
     """
 
     only: tuple[tuple[int, int], ...] | None = None
-    limits: Limits = field(default_factory=Limits)
+    bounds: Bounds = Bounds()
     folder: Path | None = None
     output: Path | None = None
     allows_outside: bool = False
     is_renewed: bool = False
 
 
-Opening = Callable[[Folder], Conversation]
+Opening = Callable[[Folder, Bounds], Conversation]
 
 
 def replay_file(path: Path, options: Options, opening: Opening) -> Replayed:
@@ -153,7 +113,7 @@ def replay_file(path: Path, options: Options, opening: Opening) -> Replayed:
     root = options.folder or path.resolve().parent
     with tempfile.TemporaryDirectory(prefix="spanwright-") as thrown_away:
         output = options.output or Path(thrown_away)
-        conversation = opening(Folder(root, options.allows_outside, output))
+        conversation = opening(Folder(root, options.allows_outside, output), options.bounds)
         try:
             return replay(log, str(path), options, conversation)
         finally:
@@ -161,8 +121,8 @@ def replay_file(path: Path, options: Options, opening: Opening) -> Replayed:
 
 
 def replay(log: Log, name: str, options: Options, conversation: Conversation) -> Replayed:
-    """Run a log again in a fresh conversation."""
-    rerun = Rerun(conversation, options.limits, name)
+    """Run a log again in a fresh conversation, which keeps to the bounds itself."""
+    rerun = Rerun(conversation, name)
     rerun.begin(log.settings)
     checks: list[Check] = []
     replies: dict[int, Reply] = {}
@@ -187,35 +147,24 @@ def replay(log: Log, name: str, options: Options, conversation: Conversation) ->
 
 
 class Rerun:
-    """A conversation in which recorded sentences are said again, within bounds."""
+    """A conversation in which recorded sentences are said again."""
 
-    def __init__(
-        self, conversation: Conversation, limits: Limits | None = None, name: str = "<log>",
-    ) -> None:
+    def __init__(self, conversation: Conversation, name: str = "<log>") -> None:
         self._conversation = conversation
-        self._limits = limits or Limits()
         self._name = name
 
     def begin(self, settings: Iterable[str]) -> None:
-        """Put the settings of a header in force, and the bounds after them."""
+        """Put the settings of a header in force."""
         for text in settings:
             sentences = parse(Source(text)).chunks
             # a header is a stranger's text: only `fix` is taken from it
             if len(sentences) == 1 and isinstance(sentences[0].sentence, syntax.Fix):
-                self._quietly(text)
-        for name in _LIMITED:
-            self._bound(name)
+                for _ in self._conversation.say(text, self._name):
+                    continue
 
     def say(self, record: Record) -> Reply:
         """Say a recorded sentence; its reply."""
         replies = list(self._conversation.say(record.text, self._name))
-        node = record.sentence
-        if isinstance(node, syntax.Fix) and node.setting in _LIMITED:
-            if not self._limits.allows(node):
-                self._bound(node.setting)
-        elif isinstance(node, syntax.Use):
-            for name in _LIMITED:
-                self._bound(name)
         if not replies:
             return Reply(0, record.line, 1, record.text, "error", "error", None, None, "", (),
                          ("this holds no sentence",), {}, 0.0)
@@ -227,15 +176,6 @@ class Rerun:
         if len(replies) != 1 or replies[0].status == "error" or replies[0].kind != "truth":
             return None
         return replies[0].status == "ok"
-
-    def _bound(self, name: str) -> None:
-        sentence = self._limits.sentence(name)
-        if sentence is not None:
-            self._quietly(sentence)
-
-    def _quietly(self, text: str) -> None:
-        for _ in self._conversation.say(text, self._name):
-            continue
 
 
 # --- Comparing -----------------------------------------------------------------------------------
@@ -363,10 +303,10 @@ def side_by_side(recorded: str, found: str, width: int = 100) -> list[str]:
 
 
 def _pieces(text: str) -> list[str]:
-    """A sum by its terms, anything else by its lines."""
+    """A sum, wrapped or not, by its terms; anything else by its lines."""
     lines = [line for line in text.split("\n") if line.strip()]
-    terms = _terms(plain(text)) if not any(line.startswith("#") for line in lines) else []
-    return terms if len(terms) > 1 else lines
+    is_sum = all(line.endswith((" +", " -")) for line in lines[:-1])
+    return _terms(plain(text)) if lines and is_sum else lines
 
 
 def _terms(text: str) -> list[str]:

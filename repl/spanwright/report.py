@@ -104,7 +104,15 @@ def _entry(record: Record, reader: _Values) -> Entry:
     if value is None:
         return entry
     status = "fails" if isinstance(value, Truth) and not value.holds else "ok"
-    return replace(entry, value=value, name=name, status=status, text=_on_one_line(text))
+    return replace(
+        entry, value=value, name=name, status=status, text=_on_one_line(text),
+        notes=_notes(text) if isinstance(value, Truth) else ())
+
+
+def _notes(text: str) -> tuple[str, ...]:
+    """What stands behind `#` with a truth: how sure it is; the difference is set as a formula."""
+    found = [line.partition("#")[2].strip() for line in text.split("\n")]
+    return tuple(line for line in found if line and not line.startswith("left - right ="))
 
 
 def _on_one_line(text: str) -> str:

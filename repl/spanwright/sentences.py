@@ -8,7 +8,7 @@ from typing import Any
 
 from spanwright import derivations, drawing, guessing, helping, settings, sweep
 from spanwright.claims import decide
-from spanwright.context import Context, Function, failure
+from spanwright.context import Context, Failure, Function, failure
 from spanwright.evaluator import TRUTH_WORDS, Evaluator, brief, worst_coefficient
 from spanwright.kernel import reduction
 from spanwright.kernel.coefficients import Scalar
@@ -44,6 +44,7 @@ class Step:
     value: Any
     is_tagged: bool = False
     has_failed: bool = False
+    remark: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -228,7 +229,8 @@ def _defined(
     if len(set(parameters)) < len(parameters):
         raise failure("name-taken", node.place, "two arguments have the same name")
     text_of = surface.source.slice(node.place)
-    function = Function(name, parameters, body, is_family, is_whole_index, text_of)
+    function = Function(
+        name, parameters, body, is_family, is_whole_index, text_of, context.local)
     return Step(context.with_name(name, function), Definition(name, text_of.strip(), function))
 
 
@@ -292,7 +294,8 @@ def _expression(
     value = _reduced(evaluator.value(node.expression), evaluator, node.expression)
     if isinstance(value, Infinity):
         raise failure("wrong-kind", node.place, "infinity is the target of a limit, no value")
-    return Step(context, value, is_tagged=True)
+    remark = evaluator.remark if isinstance(value, LaurentPolynomial) else ""
+    return Step(context, value, is_tagged=True, remark=remark)
 
 
 def _reduced(value: Any, evaluator: Evaluator, node: syntax.Node) -> Any:
@@ -431,11 +434,27 @@ def _recall(node: syntax.Recall, context: Context, surface: Surface) -> Step:
             return Step(context, Text(found.text.strip()))
         if found is None and subject.name in context.parameters:
             return Step(context, Text(f"{subject.name} is a parameter"))
+        if found is None and subject.name in _SETTINGS:
+            return Step(context, Text(helping.setting_line(subject.name, context.settings)))
         if found is None:
-            raise evaluator.unknown(subject.name, subject.place)
+            raise _not_defined(subject, context)
         return Step(context, Text(f"{subject.name} = {shown(found, context)}"))
     value = evaluator.value(subject)
     return Step(context, Text(f"{print_tree(subject)} = {shown(value, context)}"))
+
+
+def _not_defined(subject: syntax.Name, context: Context) -> Failure:
+    """Why a name can be neither recalled nor forgotten."""
+    name = subject.name
+    if name in _SETTINGS:
+        return failure("wrong-kind", subject.place,
+                       f"{name} is a setting: it is changed by `fix`, not forgotten",
+                       f"fix {name} = …")
+    if name in RESERVED:
+        return failure("wrong-kind", subject.place,
+                       f"{name} is a word of the language, not a definition of this session",
+                       f"help {name}")
+    return Evaluator(context).unknown(name, subject.place)
 
 
 def _tag_of(subject: syntax.Node, context: Context) -> int | None:
@@ -461,7 +480,7 @@ def _forget(node: syntax.Forget, context: Context, surface: Surface) -> Step:
                 raise failure("unknown-name", subject.place, f"no result has the tag {brief(tag)}")
             del results[tag]
         elif isinstance(subject, syntax.Name):
-            raise Evaluator(context).unknown(subject.name, subject.place)
+            raise _not_defined(subject, context)
         else:
             raise failure("wrong-kind", subject.place, "a name or a tag can be forgotten",
                           "forget f", "forget 7")
@@ -476,6 +495,8 @@ def _remark(node: syntax.Remark, context: Context, surface: Surface) -> Step:
 
 def _help(node: syntax.Help, context: Context, surface: Surface) -> Step:
     found = helping.page(node.topic)
+    if found is None and node.topic is not None:
+        found = helping.own_page(node.topic, context)
     if found is None:
         near = helping.nearest_topic(node.topic or "")
         raise failure("unknown-topic", node.place, f"help has nothing under {node.topic}",

@@ -24,7 +24,7 @@ from spanwright.rendering.layout import note, term_lines
 from spanwright.rendering.text import text
 from spanwright.replies import Reply, State
 from spanwright.sentences import Step, Surface, carry_out
-from spanwright.settings import LARGEST_N, Settings
+from spanwright.settings import LARGEST_N, Bounds, Settings
 from spanwright.values import Text, kind_name
 from spanwright.views import View
 from spanwright_grammar import syntax
@@ -52,6 +52,7 @@ class Outcome:
     settings: Settings
     diagnostics: tuple[Diagnostic, ...]
     seconds: float
+    remark: str = ""
 
     @property
     def value(self) -> View | None:
@@ -82,6 +83,10 @@ class Outcome:
 
     def __str__(self) -> str:
         return self.text
+
+    def __repr__(self) -> str:
+        tag = "" if self.tag is None else f", tag {self.tag}"
+        return f"Outcome({self.status}{tag}: {self.text})"
 
     def _repr_latex_(self) -> str | None:
         value = self.value
@@ -120,7 +125,7 @@ class Outcome:
             kind = kind_of(self.raw)
             terms = term_lines(self.raw, self.settings.show)
             shown = " ".join(terms) or self.text
-            remark = note(self.raw, self.settings.n)
+            remark = note(self.raw, self.settings.n, self.settings.convention) or self.remark
         return Reply(
             self.sentence, line, column, self.source.slice(self.span).strip(), self.status,
             kind, self.tag, self.settings.n, shown, terms, self.messages(),
@@ -133,7 +138,7 @@ class Outcome:
 class Session:
     """A ring, its settings, names and results, and how they change.
 
-    >>> Session(n=2).run("x_1 E_(0,1)").text
+    >>> Session(n=2).run("x_2 E_(1,0)").text
     'E_(1,1)'
     """
 
@@ -143,6 +148,7 @@ class Session:
     n_sentences: int = 0
     last_tag: int = 0
     has_quit: bool = False
+    bounds: Bounds = Bounds()
     _used: set[Path] = field(default_factory=set)
     _using: list[Path] = field(default_factory=list)
 
@@ -152,6 +158,12 @@ class Session:
             if not (isinstance(self.n, int) and 1 <= self.n <= LARGEST_N):
                 raise ValueError(f"n lies between 1 and {LARGEST_N}; this is {self.n!r}")
             self.context = replace(self.context, settings=Settings(n=self.n))
+        self.context = self._bounded(self.context)
+
+    def __repr__(self) -> str:
+        settings = self.context.settings
+        own, results = len(self.context.names), len(self.context.results)
+        return f"Session(n={settings.n}; {own} names, {results} results)"
 
     def run(self, text: str, name: str = "<input>") -> Outcome:
         """Run all sentences of a text, up to the first that is wrong; the last outcome.
@@ -219,7 +231,9 @@ class Session:
         tag = self._keep(step)
         seconds = time.perf_counter() - started
         status = "failed" if step.has_failed else "ok"
-        return self._outcome(source, chunk.span, status, step.value, tag, (), seconds)
+        return replace(
+            self._outcome(source, chunk.span, status, step.value, tag, (), seconds),
+            remark=step.remark)
 
     def _carry_out(self, sentence: syntax.Sentence, source: Source) -> Step:
         limits = self.context.settings
@@ -236,8 +250,13 @@ class Session:
             return self.guarded(
                 sentence, lambda: carry_out(sentence, self.context, surface))
 
+    def _bounded(self, context: Context) -> Context:
+        """A context whose settings keep to the bounds of this session."""
+        found = self.bounds.applied(context.settings)
+        return context if found is context.settings else replace(context, settings=found)
+
     def _keep(self, step: Step) -> int | None:
-        self.context = step.context
+        self.context = self._bounded(step.context)
         if isinstance(step.value, Text) and step.value.kind == "quit":
             self.has_quit = True
         if not step.is_tagged:

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
+from spanwright_grammar.vocabulary import SETTING_WORDS
+
 if TYPE_CHECKING:
     from spanwright.kernel.coefficients import Scalar
 
@@ -39,12 +41,29 @@ class Settings:
                 for name, value in fixed.items()}
 
 
-WORDS: dict[str, tuple[str, ...]] = {
-    "convention": ("standard", "reversed"),
-    "hecke": ("plain", "balanced"),
-    "show": ("short", "factored", "expanded"),
-    "certainty": ("exact", "random"),
-}
+@dataclass(frozen=True, slots=True)
+class Bounds:
+    """What the settings of a session never exceed, whatever its sentences fix; memory in bytes.
+
+    A replay has them, so that no log of a stranger, nor a script that it uses, lifts its limits.
+    """
+
+    seconds: int | None = None
+    terms: int | None = None
+    memory: int | None = None
+    jobs: int | None = None
+
+    def applied(self, settings: Settings) -> Settings:
+        """The settings, lowered to the bounds; one that is free is set at its bound."""
+        lowered = {}
+        for name in self.__dataclass_fields__:
+            bound, value = getattr(self, name), getattr(settings, name)
+            if bound is not None and (value is None or value > bound):
+                lowered[name] = bound
+        return settings.changed(**lowered) if lowered else settings
+
+
+WORDS = SETTING_WORDS
 """Settings whose value is one of some words."""
 
 LARGEST_N = 60

@@ -105,8 +105,8 @@ class _Run:
             pass
         except EngineLost as lost:
             kept = self.means.kept
-            hint = () if kept is None else (f"--resume {kept.name}",)
-            raise failure("stopped", self.steps.node.place,
+            hint = () if kept is None else (f"--resume {kept}",)
+            raise failure("workers-lost", self.steps.node.place,
                           f"{lost}; reached: {progress.line()}", *hint) from lost
         except Failure as stopped:
             if stopped.diagnostic.code != "over-budget":
@@ -387,7 +387,7 @@ def _into_file(
     notes: list[str] = []
     n = context.settings.n
     try:
-        place = folder.resolve(node.path)
+        place = folder.place_to_write(node.path)
         with writer(place, suffix, columns) as table:
             def consume(case: Case, result: Result) -> None:
                 cell = _cell(result, case, node, notes, lambda data: data)

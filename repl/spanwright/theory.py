@@ -11,7 +11,7 @@ from spanwright.kernel.errors import KernelError, OutsideDomain
 from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.laurent import LaurentPolynomial
-from spanwright.rendering.text import element_text, text
+from spanwright.rendering.text import by_how_much, element_text, text
 from spanwright.values import (
     FamilyMark,
     ListValue,
@@ -22,26 +22,19 @@ from spanwright.values import (
     is_index,
     is_operator,
     kind_name,
+    single_element,
 )
 from spanwright_grammar import syntax
 
 
-def _element(e: Evaluation, node: syntax.Node) -> Any:
+def element_argument(e: Evaluation, node: syntax.Node) -> Any:
+    """An argument that must be a scalar, polynomial or expansion."""
     value = e.value(node)
     if not is_element(value):
         raise failure("wrong-kind", node.place,
                       f"a polynomial or an expansion is needed here; this is {kind_name(value)}")
     scalar = as_scalar(value)
     return value if scalar is None else scalar
-
-
-def _single(value: Any) -> tuple[str, tuple[int, ...]] | None:
-    """Family symbol and index of one basis element with coefficient 1, else None."""
-    if isinstance(value, Expansion) and len(value) == 1:
-        ((index, c),) = value.terms.items()
-        if c == 1:
-            return value.family.name, index
-    return None
 
 
 def _partition(e: Evaluation, node: syntax.Node) -> tuple[int, ...]:
@@ -59,9 +52,9 @@ def norm(e: Evaluation, node: syntax.Call) -> Any:
     """<f, f> with <1, 1> = 1: closed formulas for one E_mu or P_lambda."""
     from spanwright.kernel.families import statistics
 
-    value = _element(e, node.arguments[0])
+    value = element_argument(e, node.arguments[0])
     n = e.require_n(node)
-    single = _single(value)
+    single = single_element(value)
     if single is not None and single[0] == "E":
         return statistics.norm_E(single[1])
     if single is not None and single[0] == "P":
@@ -76,7 +69,7 @@ def inner(e: Evaluation, node: syntax.Call) -> Any:
 
     n = e.require_n(node)
     left, right = (
-        reduction.expand(e.algebra.aligned(_element(e, a)), family("E"), n).terms
+        reduction.expand(e.algebra.aligned(element_argument(e, a)), family("E"), n).terms
         for a in node.arguments)
     return statistics.inner_of_E(left, right)
 
@@ -85,9 +78,9 @@ def principal(e: Evaluation, node: syntax.Call) -> Any:
     """The value at x = (1, t, ..., t^(n-1)), in closed form for one element of E, P, J, s."""
     from spanwright.kernel.families import statistics
 
-    value = _element(e, node.arguments[0])
+    value = element_argument(e, node.arguments[0])
     n = e.require_n(node)
-    single = _single(value)
+    single = single_element(value)
     if single is not None:
         name, index = single
         if name == "E":
@@ -115,17 +108,25 @@ def hooks(e: Evaluation, node: syntax.Call) -> Any:
 
 
 def kostka(e: Evaluation, node: syntax.Call) -> Any:
-    """The number of semistandard tableaux of a shape and a content."""
+    """K_{lambda mu}: a number; with one scalar K(t), Kostka-Foulkes; with two K(q, t)."""
     from spanwright.kernel.families.kostka import kostka as number
+    from spanwright.kernel.families.macdonald_kostka import kostka_foulkes, macdonald_kostka
 
-    return number(_partition(e, node.arguments[0]), _partition(e, node.arguments[1]))
+    shape, content = (_partition(e, a) for a in node.arguments[:2])
+    values = [_scalar(e, a) for a in node.arguments[2:]]
+    if not values:
+        return number(shape, content)
+    if len(values) == 1:
+        return kostka_foulkes(shape, content).substitute({"t": values[0]})
+    return macdonald_kostka(shape, content).substitute(dict(zip(("q", "t"), values, strict=True)))
 
 
-def qtkostka(e: Evaluation, node: syntax.Call) -> Any:
-    """K_{lambda mu}(q, t), by the change of basis from J to plethystic Schur functions."""
-    from spanwright.kernel.families.qt_kostka import qt_kostka
-
-    return qt_kostka(_partition(e, node.arguments[0]), _partition(e, node.arguments[1]))
+def _scalar(e: Evaluation, node: syntax.Node) -> Scalar:
+    value = as_scalar(e.value(node))
+    if value is None:
+        raise failure("wrong-kind", node.place, "a scalar is needed here",
+                      "kostka((2,1), (1,1,1), q, t)")
+    return value
 
 
 def jack(e: Evaluation, node: syntax.Call) -> Any:
@@ -144,7 +145,7 @@ def symmetric(e: Evaluation, node: syntax.Call) -> Any:
     """Whether every exchange of neighbouring variables leaves f alone."""
     from spanwright.kernel.families.symmetric_base import NotSymmetric, check_symmetric
 
-    value = _element(e, node.arguments[0])
+    value = element_argument(e, node.arguments[0])
     n = e.require_n(node)
     polynomial = reduction.to_polynomial(e.algebra.aligned(value), n)
     try:
@@ -157,7 +158,7 @@ def symmetric(e: Evaluation, node: syntax.Call) -> Any:
 
 def positive(e: Evaluation, node: syntax.Call) -> Any:
     """Whether all coefficients in a basis are polynomials with coefficients in N."""
-    value = _element(e, node.arguments[0])
+    value = element_argument(e, node.arguments[0])
     n = e.require_n(node)
     if len(node.arguments) == 2:
         mark = _family_mark(e, node.arguments[1])
@@ -165,8 +166,8 @@ def positive(e: Evaluation, node: syntax.Call) -> Any:
             value = (reduction.to_polynomial(e.algebra.aligned(value), n) if mark == "x"
                      else reduction.expand(e.algebra.aligned(value), family(mark), n))
         except KernelError as error:
-            raise failure(
-                "not-in-span", node.arguments[0].place, error.fact) from error
+            raise failure("not-in-span", node.arguments[0].place,
+                          error.fact + by_how_much(error)) from error
     if isinstance(value, Scalar):
         return Truth(is_positive(value), None, "" if is_positive(value) else text(value))
     items: Any = value.items()
@@ -200,7 +201,7 @@ def is_positive(value: Scalar) -> bool:
 
 def stable(e: Evaluation, node: syntax.Call) -> Any:
     """Whether f is what its counterpart in one variable more becomes at x_(n+1) = 0."""
-    value = _element(e, node.arguments[0])
+    value = element_argument(e, node.arguments[0])
     if not isinstance(value, Expansion):
         raise failure("wrong-kind", node.arguments[0].place,
                       "stable takes a sum of basis elements, whose indices can be lengthened",
@@ -256,7 +257,7 @@ def operator_argument(e: Evaluation, node: syntax.Node) -> Any:
 def eigenvalue(e: Evaluation, node: syntax.Call) -> Any:
     """The scalar c with A f = c f."""
     operator = operator_argument(e, node.arguments[0])
-    value = _element(e, node.arguments[1])
+    value = element_argument(e, node.arguments[1])
     from spanwright.kernel.operators.questions import NotAnEigenvector
     from spanwright.kernel.operators.questions import eigenvalue as found
 

@@ -13,9 +13,10 @@ from typing import Any
 from spanwright.context import Context, Function
 from spanwright.evaluator import Evaluator
 from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.expansions import Expansion
 from spanwright.rendering.text import text
 from spanwright.settings import Settings
-from spanwright.values import ListValue
+from spanwright.values import ListValue, is_operator
 from spanwright_grammar import syntax
 from spanwright_grammar.parsing import parse, parse_expression
 from spanwright_grammar.source import Source
@@ -25,12 +26,23 @@ NOT_SENT = ("jobs", "seconds", "memory")
 
 
 def packed_value(value: Any, n: int | None) -> Any:
-    """A value as JSON holds it: integers and indices as they are, others as text."""
+    """A value as JSON holds it: integers and indices as they are, others as text.
+
+    The text of an expansion or an operator does not say in which convention it stands, and the
+    one in force may be another by now: it goes along.
+    """
     if isinstance(value, int) and not isinstance(value, bool):
         return value
     if isinstance(value, tuple) and all(isinstance(part, int) for part in value):
         return list(value)
-    return {"n": _n_of(value) or n, "text": text(value)}
+    if isinstance(value, ListValue):
+        return {"items": [packed_value(item, n) for item in value.items]}
+    found: dict[str, Any] = {"n": _n_of(value) or n, "text": text(value)}
+    if isinstance(value, Expansion) and value.family.name == "E (reversed)":
+        found["convention"] = "reversed"
+    if is_operator(value):
+        found["hecke"] = value.normalisation
+    return found
 
 
 def unpacked_value(data: Any, context: Context) -> Any:
@@ -39,15 +51,17 @@ def unpacked_value(data: Any, context: Context) -> Any:
         return data
     if isinstance(data, list):
         return tuple(data)
-    hecke = context.settings.hecke
-    plain = Context(Settings(n=data["n"], hecke=hecke), {}, context.parameters)
+    if "items" in data:
+        return ListValue(tuple(unpacked_value(item, context) for item in data["items"]))
+    settings = Settings(
+        n=data["n"], hecke=data.get("hecke", context.settings.hecke),
+        convention=data.get("convention", "standard"))
+    plain = Context(settings, {}, context.parameters)
     evaluator = Evaluator(plain)
     return evaluator.algebra.reduced(evaluator.value(parse_expression(data["text"])))
 
 
 def _n_of(value: Any) -> int | None:
-    if isinstance(value, ListValue):
-        return max((n for n in map(_n_of, value.items) if n is not None), default=None)
     found = getattr(value, "n", None)
     return found if isinstance(found, int) else None
 
@@ -61,7 +75,7 @@ def packed_context(context: Context, sentence: syntax.Node) -> dict[str, Any]:
     n = context.settings.n
     names = {}
     mentioned = _mentioned(sentence, context)
-    for name, value in context.names.items():
+    for name, value in {**context.names, **context.local}.items():
         if name in mentioned:
             names[name] = ({"let": value.text} if isinstance(value, Function)
                            else packed_value(value, n))

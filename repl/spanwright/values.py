@@ -112,6 +112,15 @@ def is_index(value: Any) -> bool:
     return isinstance(value, tuple) and all(isinstance(p, int) for p in value)
 
 
+def single_element(value: Any) -> tuple[str, tuple[int, ...]] | None:
+    """Family symbol and index of one basis element with coefficient 1, else None."""
+    if isinstance(value, Expansion) and len(value) == 1:
+        ((index, c),) = value.terms.items()
+        if c == 1:
+            return value.family.name, index
+    return None
+
+
 def is_element(value: Any) -> bool:
     """Whether the value is a scalar, polynomial or expansion."""
     return is_number(value) or isinstance(value, Scalar | LaurentPolynomial | Expansion)

@@ -14,7 +14,19 @@ from spanwright.rendering.json import data, plain_scalar
 from spanwright.rendering.scalars import PLAIN, SYMPY_TAKEN
 from spanwright.rendering.tex import tex
 from spanwright.rendering.text import text
-from spanwright.values import IndexSet, ListValue, Truth, as_scalar, is_element, is_index, is_number
+from spanwright.values import (
+    Definition,
+    IndexSet,
+    ListValue,
+    Setting,
+    Table,
+    Text,
+    Truth,
+    as_scalar,
+    is_element,
+    is_index,
+    is_number,
+)
 
 
 class View:
@@ -112,7 +124,14 @@ class View:
         """The value as TeX."""
         return tex(self.raw, self._show)
 
-    def _repr_latex_(self) -> str:
+    def _repr_latex_(self) -> str | None:
+        """TeX for a notebook; None for prose, whose text is better."""
+        if isinstance(self.raw, Text | Definition | Setting | str):
+            return None
+        if isinstance(self.raw, Table):
+            cells = (cell for row in self.raw.rows for cell in row)
+            if any(isinstance(cell, str) for cell in cells):
+                return None
         return f"$\\displaystyle {self.to_tex()}$"
 
     def to_sympy(self) -> Any:
@@ -157,6 +176,8 @@ def _are_equal(a: Any, b: Any) -> bool:
     if isinstance(a, ListValue) and isinstance(b, ListValue | list):
         others = b.items if isinstance(b, ListValue) else b
         return len(a.items) == len(others) and all(map(_are_equal, a.items, others))
+    if isinstance(a, IndexSet) and isinstance(b, IndexSet):
+        return a.size() == b.size() and all(map(b.contains, a))
     if is_index(a) and is_index(b):
         return bool(a == b)
     return bool(a == b) if type(a) is type(b) else False

@@ -50,15 +50,17 @@ def cases(is_quick: bool) -> list[Case]:
     large = _conversation("fix n = 3", *(f"let l{k} = list(1..{held})" for k in range(3)))
     here = LocalConversation(Session(n=3))
     claim = "claim x_1 x_2 = x_2 x_1"
+    # the same work, of a shape that is not known to be small
+    guarded = "claim x_1^1 x_2^(2-1) = x_2 x_1"
     return [
         Case(
             name="checkpoint",
             what="a small claim, told to a session here and to one in an evaluator process",
             contenders=[
                 Contender("in this process", _said(here, claim)),
-                Contender("across, no checkpoint", _said(small, 'remark "so"')),
-                Contender("across, with checkpoint", _said(small, claim)),
-                Contender("across, large session", _said(large, claim)),
+                Contender("across, small by its tree", _said(small, claim)),
+                Contender("across, at a checkpoint", _said(small, guarded)),
+                Contender("the same, large session", _said(large, guarded)),
             ],
         ),
         Case(

@@ -32,13 +32,14 @@ def test_an_unknown_name_comes_with_the_nearest_spelling() -> None:
         "2:10 error unknown-name: degre is not defined | degree",
         "2:23 error unknown-name: zzz is not defined | let zzz = …",
     )
+    check_findings("expnad 1 in E", "1:1 error unknown-name: expnad is not defined | expand")
 
 
 def test_the_number_of_parts_is_that_of_the_n_in_force_at_the_line() -> None:
     check_findings(
         "E_(1,0)\nfix n = 3\nE_(1,0); E_(1,0,2); E_10; E_(2)\nfix n = 2\nE_(1,0); E_(1,0,2|(2,1))",
         "3:1 error wrong-number-of-parts: E_(1,0) has 2 parts, the ring has n = 3 | E_(1,0,0)",
-        "3:21 error wrong-number-of-parts: E_10 has 2 parts, the ring has n = 3 | E_(1,0,0)",
+        "3:21 error wrong-number-of-parts: E_(1,0) has 2 parts, the ring has n = 3 | E_(1,0,0)",
         "3:27 error wrong-number-of-parts: E_(2) has 1 part, the ring has n = 3 | E_(2,0,0)",
         "5:10 error wrong-number-of-parts: E_(1,0,2|(2,1)) has 3 parts, the ring has n = 2 "
         "| E_(1,0)",

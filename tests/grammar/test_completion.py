@@ -7,10 +7,10 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from spanwright_grammar.bindings import Scope
-from spanwright_grammar.completion import FORMS, SETTING_WORDS, Completion, complete
+from spanwright_grammar.completion import Completion, complete
 from spanwright_grammar.parsing import parse
 from spanwright_grammar.source import Source
-from spanwright_grammar.vocabulary import by_kind
+from spanwright_grammar.vocabulary import FORMS, SETTING_WORDS, by_kind
 
 CURSOR = "▮"
 RING = Scope(
@@ -54,6 +54,7 @@ def inserts(text: str, scope: Scope = RING) -> list[str]:
         ("fix sh▮", ["show"]),
         ("fix show = ▮", list(SETTING_WORDS["show"])),
         ("fix n = ▮", ["3"]),
+        ("fix seconds = ▮", ["60", "free"]),
         ("show f as ▮", list(FORMS)),
         # Words that the grammar allows here.
         ("find mu in compositions(2) wh▮", ["where"]),
@@ -121,6 +122,9 @@ def test_files_are_asked_for_behind_use() -> None:
     found = complete(text, len(text), RING, files)
     assert asked == ["l"]
     assert [(item.insert, item.start) for item in found] == [('lemmas.span"', 5), ("lib/", 5)]
+    found = complete("use ", 4, RING, files)
+    assert asked == ["l", ""]
+    assert [(item.insert, item.start) for item in found] == [('"lemmas.span"', 4), ('"lib/', 4)]
 
 
 @given(st.text(alphabet='xE_(){}[]12,;:=+-^|"\\# \nfixlethowmuκ', max_size=30), st.data())

@@ -36,6 +36,11 @@ def signature_at(text: str) -> tuple[str, int] | None:
         ("a▮", ("a", 0)),
         ("derive x_1 ▮", ("derive f, derive A in X, T", 0)),
         ("κ▮", ("kappa_mu", 0)),
+        # behind its last bracket a word is still at the cursor; the first word of a sum is not
+        ("x_1 + E_(2,0,1)▮", ("E_mu, E_(mu|w)", 0)),
+        ("degree(x_1)▮", ("degree(f)", 0)),
+        ("x_1 + ▮", None),
+        ("x_1 + (x_2)▮", None),
         ("zork▮", None),
         ("# x_1▮", None),
         ("▮", None),
@@ -57,6 +62,13 @@ def test_a_word_of_the_language_is_explained() -> None:
     assert found[0] == Span(4, 5)
     assert "nonsymmetric Macdonald polynomial" in found[1]
     assert "Haglund" in found[1]
+
+
+def test_an_index_belongs_to_its_word() -> None:
+    for text in ("x_1 E_(2,▮0,1)", "x_1 E_(2,0,1)▮", "x_1 E_(▮"):
+        found = hover_at(text)
+        assert found is not None and found[0] == Span(4, 5)
+    assert hover_at("degree(x_1 ▮ + x_2)") is None
 
 
 def test_an_own_name_leads_to_its_definition() -> None:

@@ -187,7 +187,7 @@ def test_covers_and_bruhat_order(n: int) -> None:
         found = {image: (a, b) for a, b, image in indices.covers(w)}
         assert found == {image: graph.edges[w, image]["positions"] for image in graph[w]}
         above = {w} | networkx.descendants(graph, w)
-        assert {v for v in graph if indices.bruhat_leq(w, v)} == above
+        assert {v for v in graph if indices.is_bruhat_below(w, v)} == above
     assert networkx.is_directed_acyclic_graph(graph)
     # the tableau criterion's covers are the covers: the graph has no shortcut edge
     assert networkx.transitive_reduction(graph).edges == graph.edges
@@ -202,13 +202,13 @@ def test_bruhat_order_by_subwords(u: tuple[int, ...], v: tuple[int, ...]) -> Non
     for a in indices.reduced_word(indices.extended(v, n)):
         step = indices.from_word((a,), n)
         reached |= {indices.product(w, step) for w in reached}
-    assert indices.bruhat_leq(u, v) == (indices.extended(u, n) in reached)
+    assert indices.is_bruhat_below(u, v) == (indices.extended(u, n) in reached)
 
 
 def test_size_of_the_bruhat_order() -> None:
     """Pairs u <= v in S_1, ..., S_4: 1, 3, 19, 213 (from memory)."""
     counts = [
-        sum(indices.bruhat_leq(u, v) for u in group for v in group)
+        sum(indices.is_bruhat_below(u, v) for u in group for v in group)
         for group in (list(indices.permutations(n)) for n in range(1, 5))]
     assert counts == [1, 3, 19, 213]
 

@@ -311,3 +311,32 @@ def test_divided_difference_of_a_monomial(a: int, b: int) -> None:
     low, high, sign = (b, a, 1) if a > b else (a, b, -1)
     found = {k: int(c.coefficient(0)) for k, c in divided_differences(line).items()}
     assert found == dict.fromkeys(range(low, high), sign)
+
+
+def test_what_cannot_be_held_is_not_begun() -> None:
+    one = UNIT
+    with pytest.raises(OverBudget, match="1,000,001 terms with numbers of up to 301,0"):
+        (x[0] + one.scaled(q)) ** 10**6
+    with pytest.raises(OverBudget, match="1,003,003,001 terms"):
+        laurent.check_product([(y + one) ** 1000 for y in x])
+    with budget.using(budget.Budget(max_bytes=10**5)), pytest.raises(OverBudget):
+        (x[0] + x[1]) ** 3000
+
+
+@given(POLYNOMIALS, POLYNOMIALS, st.integers(1, 4))
+def test_sizes_are_never_guessed_too_small(
+    f: LaurentPolynomial, g: LaurentPolynomial, exponent: int
+) -> None:
+    if f and g:
+        assert len(f * g) <= laurent._box([f.terms, g.terms])
+        assert len(f**exponent) <= laurent._box([f.terms], exponent)
+        laurent.check_product([f, g])
+
+
+def test_a_homogeneous_product_is_not_refused_for_its_box() -> None:
+    told: list[str] = []
+    f = (x[0] + x[1] + x[2]) ** 20
+    with budget.using(budget.Budget(max_terms=4_000, report=told.append)):
+        assert len(f * f * f) == 62 * 61 // 2
+        assert told[-1] == "a product of about 1,891 terms"
+        assert len((x[0] + x[1] + x[2] + UNIT) ** 26) == 29 * 28 * 27 // 6

@@ -12,10 +12,10 @@ from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families import macdonald
 from spanwright.kernel.families import nonsymmetric_macdonald as nonsymmetric
 from spanwright.kernel.families.kostka import kostka
-from spanwright.kernel.families.qt_kostka import (
+from spanwright.kernel.families.macdonald_kostka import (
     kostka_foulkes,
-    modified_qt_kostka,
-    qt_kostka,
+    macdonald_kostka,
+    modified_macdonald_kostka,
 )
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.indices import conjugate, decreasing, padded, partitions
@@ -115,7 +115,8 @@ def test_dictionary_of_limits(index: tuple[int, ...], n: int) -> None:
     assert f.substitute_parameters({"t": ZERO}) == whittaker
     increasing = tuple(reversed(padded(index, n)))
     assert nonsymmetric.to_monomials(increasing).substitute_parameters({"t": ZERO}) == whittaker
-    # in N[q], as Kostka-Foulkes polynomials are positive (Lascoux and Schützenberger 1978)
+    # in N[q], as Kostka-Foulkes polynomials are positive (Lascoux and Schützenberger, Sur une
+    # conjecture de H. O. Foulkes, 1978)
     assert all(c > 0 for p in whittaker.terms.values() for c in p.coeffs())
 
 
@@ -197,26 +198,26 @@ def test_strip_weights_are_dual() -> None:
 # qt-Kostka
 
 
-def test_qt_kostka_laws() -> None:
+def test_macdonald_kostka_laws() -> None:
     """K(1,1) = f^lambda, K(0,1) and K(0,t) Kostka and Kostka-Foulkes, duality (VI.8)."""
     for size in range(1, 6):
         shapes = list(partitions(size))
         for mu in shapes:
             for shape in shapes:
-                value = qt_kostka(shape, mu)
+                value = macdonald_kostka(shape, mu)
                 assert value.is_polynomial
                 assert value.substitute({"q": ONE, "t": ONE}) == kostka(shape, (1,) * size)
                 assert value.substitute({"q": ZERO, "t": ONE}) == kostka(shape, mu)
-                turned = qt_kostka(conjugate(shape), conjugate(mu))
+                turned = macdonald_kostka(conjugate(shape), conjugate(mu))
                 assert turned.substitute({"q": t, "t": q}) == value
-    assert qt_kostka((2,), (1,)) == 0
+    assert macdonald_kostka((2,), (1,)) == 0
 
 
-def test_qt_kostka_is_positive() -> None:
+def test_macdonald_kostka_is_positive() -> None:
     """Coefficients in N (Haiman, Hilbert schemes, polygraphs and positivity, 2001)."""
     for mu in partitions(6):
         for shape in partitions(6):
-            value = modified_qt_kostka(shape, mu)
+            value = modified_macdonald_kostka(shape, mu)
             assert value.is_polynomial
             assert all(c > 0 for c in value.expanded_rest().coeffs())
 
@@ -232,8 +233,8 @@ def test_kostka_foulkes_expands_schur_in_hall_littlewood() -> None:
         assert total == family("s").to_monomials(shape, n)
 
 
-def test_qt_kostka_refuses_what_is_no_partition() -> None:
+def test_macdonald_kostka_refuses_what_is_no_partition() -> None:
     with pytest.raises(OutsideDomain) as caught:
-        qt_kostka((1, 2), (2, 1))
+        macdonald_kostka((1, 2), (2, 1))
     assert caught.value.code == "not-a-partition"
     assert decreasing((1, 2)) == (2, 1)

@@ -17,12 +17,12 @@ from spanwright.kernel.families import double_schubert, schubert
 from spanwright.kernel.families.base import linear
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.indices import (
-    bruhat_leq,
     code,
     extended,
     from_code,
     from_word,
     inverse,
+    is_bruhat_below,
     length,
     longest,
     orbit,
@@ -204,8 +204,6 @@ def test_monk_and_generator_rules_against_multiplying_out(r: int) -> None:
 
 def test_generator_rule_leaves_the_symmetric_group() -> None:
     assert schubert.multiply_by_generator((3, 2, 1), 3) == {(3, 2, 4, 1): 1}
-    assert schubert.variables_needed(schubert.multiply_by_generator((3, 2, 1), 2)) == 2
-    assert schubert.variables_needed(schubert.multiply_by_generator((), 4)) == 4
     assert S.times_generator((2, 1), 2, 1, -1) is None
 
 
@@ -471,7 +469,7 @@ def test_localisation() -> None:
     for w, v in pairs(group(4), repeat=2):
         at = {i: double_schubert.y(value) for i, value in enumerate(extended(v, 4)[:3], 1)}
         value = DOUBLE.to_monomials(w, 3).evaluate(at).coefficient((0, 0, 0))
-        assert value.is_zero != bruhat_leq(w, v)
+        assert value.is_zero != is_bruhat_below(w, v)
         if v == w:
             expected = Scalar.one(RING)
             for i in range(len(w)):

@@ -162,7 +162,10 @@ def test_principal_specialisations() -> None:
 
 
 def test_duality_of_E_at_spectral_points() -> None:
-    """E_mu(u(nu))/E_mu(u(0)) = E_nu(u(mu))/E_nu(u(0)) (Cherednik 1995)."""
+    """E_mu(u(nu))/E_mu(u(0)) = E_nu(u(mu))/E_nu(u(0)).
+
+    Cherednik, Nonsymmetric Macdonald polynomials (1995).
+    """
     def at(mu: tuple[int, ...], nu: tuple[int, ...]) -> Scalar:
         values = {
             j: q**part * t**rank

@@ -80,8 +80,9 @@ def test_basement_is_the_fillings_sum_made_monic(mu: tuple[int, ...]) -> None:
 
 @pytest.mark.parametrize("eta", [(1, 0, 2), (0, 1, 1), (2, 0, 0), (0, -1, 1), (1, 2, 0)])
 def test_reversed_convention_is_the_eigenfunction_of_z(eta: tuple[int, ...]) -> None:
-    # Z_i = t^(i-n) T_i ... T_(n-1) T_pi^-1 T_1^-1 ... T_(i-1)^-1 (Baker and Forrester 1997,
-    # from memory), eigenvalue q^(eta_i) t^(-#{k<i: eta_k >= eta_i} - #{k>i: eta_k > eta_i})
+    # Z_i = t^(i-n) T_i ... T_(n-1) T_pi^-1 T_1^-1 ... T_(i-1)^-1 (Baker and Forrester,
+    # A q-analogue of the type A Dunkl operator and integral kernel, 1997; from memory),
+    # eigenvalue q^(eta_i) t^(-#{k<i: eta_k >= eta_i} - #{k>i: eta_k > eta_i})
     n = 3
     f = FAMILIES["E (reversed)"].to_monomials(eta, n)
     for i in range(1, n + 1):

@@ -14,10 +14,10 @@ from spanwright.kernel.families import double_schubert, schubert
 from spanwright.kernel.families.base import linear
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.indices import (
-    bruhat_leq,
     code,
     extended,
     from_code,
+    is_bruhat_below,
     length,
     longest,
     partitions,
@@ -272,7 +272,7 @@ def test_covers_against_transitive_reduction_of_bruhat_order() -> None:
     n = 4
     everyone = [extended(reduced_size(w), n) for w in permutations(n)]
     order = networkx.DiGraph(
-        (u, v) for u, v in pairs(everyone, repeat=2) if u != v and bruhat_leq(u, v))
+        (u, v) for u, v in pairs(everyone, repeat=2) if u != v and is_bruhat_below(u, v))
     covers = networkx.transitive_reduction(order)
     for w in everyone:
         for r in range(1, n):

@@ -14,7 +14,7 @@ from spanwright.kernel.families.base import linear
 from spanwright.kernel.families.jack import integral_jack
 from spanwright.kernel.families.kostka import kostka
 from spanwright.kernel.families.littlewood_richardson import coefficient, littlewood_richardson
-from spanwright.kernel.families.qt_kostka import modified_qt_kostka, qt_kostka
+from spanwright.kernel.families.macdonald_kostka import macdonald_kostka, modified_macdonald_kostka
 from spanwright.kernel.families.registry import family
 from spanwright.kernel.families.transitions import character, transition
 from spanwright.kernel.indices import conjugate, padded, partitions
@@ -83,11 +83,11 @@ QT_KOSTKA: dict[int, list[list[Any]]] = {
 
 
 @pytest.mark.parametrize("size", QT_KOSTKA)
-def test_qt_kostka_tables(size: int) -> None:
+def test_macdonald_kostka_tables(size: int) -> None:
     shapes = list(partitions(size))
     for mu, row in zip(shapes, QT_KOSTKA[size], strict=True):
         for shape, expected in zip(shapes, row, strict=True):
-            assert qt_kostka(shape, mu) == expected
+            assert macdonald_kostka(shape, mu) == expected
 
 
 def fillings_sum(mu: Shape, content: Shape) -> Scalar:
@@ -118,7 +118,7 @@ def fillings_sum(mu: Shape, content: Shape) -> Scalar:
 
 
 @pytest.mark.parametrize("size", [2, 3, 4, 5])
-def test_qt_kostka_by_fillings(size: int) -> None:
+def test_macdonald_kostka_by_fillings(size: int) -> None:
     shapes = list(partitions(size))
     for mu in shapes if size < 5 else [(3, 2), (3, 1, 1), (2, 2, 1)]:
         in_m = {
@@ -128,7 +128,7 @@ def test_qt_kostka_by_fillings(size: int) -> None:
         for content, value in in_m.items():
             expected = ZERO
             for shape in shapes:
-                expected = expected + modified_qt_kostka(shape, mu) * kostka(shape, content)
+                expected = expected + modified_macdonald_kostka(shape, mu) * kostka(shape, content)
             assert value == expected
 
 

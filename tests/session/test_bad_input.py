@@ -180,3 +180,10 @@ def test_the_place_is_counted_in_lines_of_the_whole_text() -> None:
         "    x_3",
         "      ^",
     ]
+
+
+def test_a_long_name_or_index_does_not_fill_the_screen() -> None:
+    for text in ("a" * 100_000, f"E_({'1,' * 50_000}2)", f"T_({'1,' * 50_000}2)"):
+        found = last(text, n=2)
+        assert found.status == "error"
+        assert len(found.text) < 1500

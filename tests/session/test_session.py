@@ -147,6 +147,30 @@ def test_notebooks_show_tex() -> None:
     session = Session(n=2)
     assert session.run("E_01")._repr_latex_() == r"$\displaystyle E_{(0,1)}$"
     assert session.run("1/0")._repr_latex_() is None
+    for prose in ("help E", "let f = 1", "fix t = 2", '"word"', "fix t = free; derive x_1 E_01"):
+        assert session.run(prose)._repr_latex_() is None
+    table = session.run("tabulate x_1 E_mu for mu in compositions(1)")._repr_latex_()
+    assert table is not None and table.startswith(r"$\displaystyle \begin{array}")
+
+
+def test_sessions_and_outcomes_are_short_in_a_notebook() -> None:
+    session = Session(n=2)
+    assert repr(session.run("x_2 E_(1,0)")) == "Outcome(ok, tag 1: E_(1,1))"
+    session.run("let f = 2")
+    assert repr(session) == "Session(n=2; 1 names, 1 results)"
+
+
+@pytest.mark.parametrize("same", [
+    ("1..3", "{3,1,2}"), ("compositions(2)", "{(2,0),(0,2),(1,1)}"), ("subsets(1..2)",) * 2,
+    ("orbit((2,1))", "orbit((1,2))"), ("{}", "2..1"), ("permutations(2)", "orbit((1,2))"),
+])
+def test_index_sets_are_equal_as_sets(same: tuple[str, str]) -> None:
+    session = Session(n=2)
+    first, second = (session.run(text).value for text in same)
+    assert first == second
+    assert session.run(f"claim {same[0]} = {same[1]}").status == "ok"
+    assert first != session.run("{(7,7)}").value
+    assert session.run(f"claim {same[0]} = {{(7,7)}}").status == "failed"
     assert session.run("x_1/q").value.to_tex() == r"\frac{1}{q} x_{1}"  # type: ignore[union-attr]
 
 
@@ -185,3 +209,14 @@ def test_sessions_do_not_share_names() -> None:
     one.run("let f = 1")
     assert other.run("f").status == "error"
     assert other.run("x_3").status == "ok"
+
+
+def test_a_result_of_the_other_convention_says_so() -> None:
+    session = Session(n=2)
+    session.run("E_01; fix convention = reversed; E_01")
+    assert session.run("eq_1").reply().note == "in the standard convention"
+    assert session.run("eq_2").reply().note == ""
+    session.run("fix convention = standard")
+    assert session.run("eq_1").reply().note == ""
+    assert session.run("eq_2").reply().note == "in the reversed convention"
+    assert session.run("P_(1)").reply().note == ""

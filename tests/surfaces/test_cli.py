@@ -156,7 +156,7 @@ def test_version_and_help(capsys: pytest.CaptureFixture[str]) -> None:
 
 def test_arguments_that_are_not_utf8(capsys: pytest.CaptureFixture[str]) -> None:
     assert cli.main(["-e", "1 + \udcff"]) == 1
-    assert "has no meaning here" in capsys.readouterr().out
+    assert "a byte that is not UTF-8 stands here" in capsys.readouterr().out
 
 
 def test_every_file_has_its_own_session(
@@ -194,3 +194,39 @@ def test_a_byte_order_mark_and_other_line_ends(
     shown = capsys.readouterr()
     assert shown.out.splitlines()[:2] == ["n = 2", "x_1 + x_2   # (1)"]
     assert "a.span:4:3: x_3 does not exist" in shown.err
+
+
+def test_output_that_cannot_be_written(tmp_path: Path) -> None:
+    with open("/dev/full", "wb") as full:
+        found = subprocess.run(
+            [sys.executable, "-m", "spanwright", "-e", "1 + 1"], stdout=full,
+            stderr=subprocess.PIPE, cwd=tmp_path, timeout=60, check=False)
+    assert found.returncode == cli.USAGE
+    assert found.stderr == b"spanwright: no space left on device\n"
+
+
+def test_many_cases_from_the_command_line(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    (tmp_path / "a.span").write_text(
+        "fix n = 3\n"
+        'tabulate norm(E_mu) for mu in compositions(1) to "a.csv"\n'
+        "for i in 1..9: claim i < 4\n", "utf-8")
+    tables = []
+    for jobs in ("1", "2", "8"):
+        assert cli.main(["run", "--jobs", jobs, "a.span"]) == 1
+        assert "# 9 cases: 3 held, 6 failed" in capsys.readouterr().out
+        tables.append((tmp_path / "a.csv").read_bytes())
+    assert tables[0].count(b"\n") == 4 and tables[0] == tables[1] == tables[2]
+    assert cli.main(["run", "--stop-at-first", "a.span"]) == 1
+    shown = capsys.readouterr().out
+    assert "# 4 cases: 3 held, 1 failed\n# ended at the first counterexample" in shown
+    (tmp_path / "b.span").write_text(
+        "fix n = 4\nlet f = x_1 + q x_2 + t x_3 + x_4 + 1\n"
+        "for k in {1, 60}: claim x_1 f^k = f^k x_1\n", "utf-8")
+    assert cli.main(["run", "--case-seconds", "0.3", "b.span"]) == 1
+    shown = capsys.readouterr()
+    assert "# 2 cases: 1 held, 1 undecided" in shown.out
+    assert "# undecided: k = 60: stopped after 0.3 seconds" in shown.out
+    assert "b.span:3:1: not every case was decided" in shown.err

@@ -118,7 +118,7 @@ def test_a_scheduler_that_goes_away_leaves_what_can_be_resumed(
     outcome = outcome_of(text, cluster=cluster.address, kept=kept, progress=kill)
     assert outcome.status == "error" and time.monotonic() - started < 25
     first = outcome.diagnostics[0]
-    assert "reached: " in first.message and first.hints == ("--resume cases.jsonl",)
+    assert "reached: " in first.message and first.hints == (f"--resume {kept}",)
     n_finished = kept.read_bytes().count(b"\n")
     assert 0 < n_finished < 90
     assert tally_of(text, jobs=2, kept=kept) == tally_of(text, jobs=0)
@@ -132,6 +132,21 @@ def test_nobody_at_the_address() -> None:
     for wrong in (address, "tcp://nowhere.invalid:8786", "scheduler"):
         outcome = outcome_of("for i in 1..3: claim i = i", cluster=wrong)
         assert f"no scheduler answers at {wrong} (" in outcome.diagnostics[0].message
+
+
+def test_finished_cases_are_kept_beside_the_script_unasked(tmp_path: Path) -> None:
+    script = tmp_path / "notes.span"
+    script.write_text("for i in 1..3: claim i = i\nlet a = 2\n")
+    with socket.socket() as free:
+        free.bind(("127.0.0.1", 0))
+        address = f"tcp://127.0.0.1:{free.getsockname()[1]}"
+    run = subprocess.run(
+        [sys.executable, "-m", "spanwright", "run", "--cluster", address, str(script)],
+        capture_output=True, text=True, check=False)
+    kept = tmp_path / "notes.cases.jsonl"
+    assert run.returncode == 1 and kept.exists()
+    assert f"finished cases are kept in {kept}" in run.stderr
+    assert f"--resume {kept}" in run.stdout and run.stdout.endswith("a = 2\n")
 
 
 def test_a_missing_package_is_named(monkeypatch: pytest.MonkeyPatch) -> None:

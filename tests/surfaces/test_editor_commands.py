@@ -125,3 +125,23 @@ def test_serving_on_a_port_that_is_taken_says_so() -> None:
         port = taken.getsockname()[1]
         assert serve(port, errors) == 2
         assert f"port {port}: " in errors.getvalue()
+
+
+@pytest.mark.parametrize("port", ["99999", "x", "-1", "9" * 5000])
+def test_a_port_that_cannot_be_is_refused(port: str, capsys: pytest.CaptureFixture[str]) -> None:
+    from spanwright.cli import main
+
+    with pytest.raises(SystemExit) as caught:
+        main(["serve", f"--tcp={port}"])
+    assert caught.value.code == 2
+    assert "a port is a number from 0 to 65535" in capsys.readouterr().err
+
+
+def test_check_of_bytes_that_are_not_utf8(tmp_path: Path) -> None:
+    path = tmp_path / "latin.span"
+    path.write_bytes(b"fix n = 2\nx_1 \xe9\n")
+    status, out, _ = run(check, path)
+    assert status == 1
+    assert out == (
+        f"{path}:2:5: error: a byte that is not UTF-8 stands here [invalid-character]\n"
+    )

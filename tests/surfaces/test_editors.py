@@ -34,7 +34,7 @@ SCOPES = {
 
 
 def test_the_files_are_up_to_date() -> None:
-    script = ROOT / "scripts" / "write-editors"
+    script = ROOT / "scripts" / "editors.py"
     found = subprocess.run(
         [sys.executable, script, "--check"], capture_output=True, text=True, check=False
     )
@@ -83,6 +83,12 @@ def blocks(language: str) -> list[str]:
     """The blocks of a language in the page for editors."""
     text = (EDITORS / "README.md").read_text(encoding="utf-8")
     return re.findall(rf"```{language}\n(.*?)```", text, re.DOTALL)
+
+
+@pytest.mark.parametrize("language", ["lua", "elisp"])
+def test_the_two_pages_give_the_same_configurations(language: str) -> None:
+    front = (ROOT / "README.md").read_text(encoding="utf-8")
+    assert re.findall(rf"```{language}\n(.*?)```", front, re.DOTALL) == blocks(language) != []
 
 
 def test_configurations_are_well_formed() -> None:

@@ -118,7 +118,7 @@ def test_coefficients_are_read_as_the_language_reads_them(text: str) -> None:
     ('{"kind": "expansion", "n": 2, "basis": "W", "terms": []}', "no basis 'W'"),
     ('{"kind": "expansion", "n": 2, "basis": "E", "terms": [{}]}', "term 1 of the value"),
     ('{"kind": "expansion", "n": 2, "basis": "E", "terms": '
-     '[{"index": [1], "coefficient": "1"}]}', "1 parts"),
+     '[{"index": [1], "coefficient": "1"}]}', "1 part"),
     ('{"kind": "expansion", "n": 2, "basis": "x", "terms": '
      '[{"index": [1], "coefficient": "1"}]}', "has 1 parts, n is 2"),
     ('{"kind": "expansion", "n": 2, "basis": "P", "terms": '

@@ -333,6 +333,31 @@ def test_lost_session_is_offered_once_it_is_lost(tmp_path: Path) -> None:
     assert not unused.path.exists()
 
 
+def test_a_lost_session_is_found_behind_newer_logs(tmp_path: Path) -> None:
+    lost, running, left = (
+        Journal.create(tmp_path / f"{name}.span") for name in ("lost", "running", "left"))
+    for k, kept in enumerate((lost, running)):
+        say(kept, Session(n=2), "x_1")
+        os.utime(kept.path, (time.time() + k - 20,) * 2)
+    lost.let_go()
+    assert journal.interrupted(tmp_path, is_last=True) == lost.path
+    say(left, Session(n=2), "x_1")
+    left.close()
+    # a session that was left since is no reason to ask again, nor to give the lost one up
+    assert journal.interrupted(tmp_path, is_last=True) is None
+    assert journal.interrupted(tmp_path) == lost.path
+    os.utime(lost.path, (time.time() - journal.OFFERED_FOR - 60,) * 2)
+    assert journal.interrupted(tmp_path) is None
+    running.close()
+
+
+def test_leaving_at_once_keeps_no_log(tmp_path: Path) -> None:
+    kept = Journal.create(tmp_path / "log.span")
+    say(kept, Session(n=2), "quit")
+    kept.close(keeps_empty=False)
+    assert not kept.path.exists()
+
+
 def test_killed_at_random_moments_loses_nothing(tmp_path: Path) -> None:
     n_kills = effort(25)
     done = subprocess.run(

@@ -18,13 +18,13 @@ from spanwright.replay import (
     EXTRA,
     MISSING,
     OTHER_FORM,
-    Limits,
     lines_of,
     replay,
     side_by_side,
 )
 from spanwright.replay import Options as ReplayOptions
 from spanwright.session import Session
+from spanwright.settings import Bounds, Settings
 
 KEPT_LOGS = sorted((Path(__file__).resolve().parents[1] / "logs").glob("*.span"))
 
@@ -248,7 +248,7 @@ def test_a_torn_end_is_told_and_agrees(tmp_path: Path) -> None:
 
 def test_limits_end_in_a_message() -> None:
     text = log_text(["fix n = 4", "expand (x_1 + x_2 + x_3 + x_4)^9 in x", "x_1"])
-    verdict = again(text, limits=Limits(terms=50)).of(MISSING)
+    verdict = again(text, bounds=Bounds(terms=50)).of(MISSING)
     assert [c.source for c in verdict] == ["expand (x_1 + x_2 + x_3 + x_4)^9 in x"]
     assert "50" in verdict[0].note
 
@@ -261,7 +261,7 @@ def test_a_log_cannot_lift_its_bounds(raise_it: str) -> None:
         if raise_it != "fix terms = 60" else log_text(
             ["fix n = 4", "expand (x_1 + x_2 + x_3 + x_4)^9 in x"]).replace(
                 "fix n = 4\n", f"{raise_it}\nfix n = 4\n", 1)
-    found = again(text, limits=Limits(terms=50))
+    found = again(text, bounds=Bounds(terms=50))
     assert any("50" in c.note for c in found.of(MISSING)), found.checks
 
 
@@ -274,18 +274,31 @@ def test_a_used_script_cannot_lift_the_bounds(tmp_path: Path) -> None:
 
 
 def test_a_lower_bound_of_the_log_stays() -> None:
-    limits = Limits(seconds=50, terms=1000, memory=2000)
-    for text, is_allowed in (
-        ("fix seconds = 20", True), ("fix seconds = 51", False), ("fix seconds = free", False),
-        ("fix memory = 1 GB", True), ("fix memory = 3 GB", False), ("fix terms = 2 * 9", False),
+    bounds = Bounds(seconds=50, terms=1000, memory=2 * 10**9)
+    session = Session(bounds=bounds)
+    for text, name, value in (
+        ("fix seconds = 20", "seconds", 20), ("fix seconds = 51", "seconds", 50),
+        ("fix seconds = free", "seconds", 50), ("fix memory = 1 GB", "memory", 10**9),
+        ("fix memory = 3 GB", "memory", 2 * 10**9), ("fix terms = 2 * 9", "terms", 18),
+        ("fix terms = 10^6", "terms", 1000),
     ):
-        from spanwright_grammar import syntax
-        from spanwright_grammar.parsing import parse
-        from spanwright_grammar.source import Source
+        assert session.run(text).status == "ok"
+        assert getattr(session.context.settings, name) == value, text
+    assert bounds.applied(Settings()) == Settings(seconds=50, terms=1000, memory=2 * 10**9)
+    assert Bounds().applied(Settings(seconds=7)) == Settings(seconds=7)
 
-        (node,) = parse(Source(text)).sentences
-        assert isinstance(node, syntax.Fix)
-        assert limits.allows(node) is is_allowed, text
+
+def test_no_script_lifts_the_bounds_of_the_evaluator_from_within(tmp_path: Path) -> None:
+    (tmp_path / "lift.span").write_text(
+        "fix terms = 1000000; fix seconds = 100; fix memory = 100 GB\nfix n = 4\n"
+        "let f = (x_1 + x_2 + x_3 + x_4)^9\n")
+    path = tmp_path / "demo.span"
+    write_log(path, 'use "lift.span"\nf')
+    said: list[str] = []
+    status = log_commands.replay(
+        options("replay", str(path), "--terms", "50"), said.append, said.append,
+        lambda question: False)
+    assert status == 1 and any("50" in line for line in said), said
 
 
 # --- What a stranger's log may do ----------------------------------------------------------------
@@ -303,6 +316,25 @@ def test_replay_writes_below_output_and_nowhere_else(tmp_path: Path) -> None:
     assert (tmp_path / "out" / "f.txt").read_text() == "x_1\n"
     assert (home / "f.txt").read_text() == "mine"
     assert sorted(p.name for p in home.iterdir()) == ["demo.span", "f.txt"]
+
+
+def test_tables_are_written_below_output_too(tmp_path: Path) -> None:
+    home, out = tmp_path / "home", tmp_path / "out"
+    home.mkdir()
+    path = home / "demo.span"
+    write_log(path, 'fix n = 2\ntabulate x_1 E_mu for mu in compositions(1) to "w.csv"')
+    table = (home / "w.csv").read_text()
+    assert "(0,1)" in table
+    (home / "w.csv").write_text("mine")
+    said: list[str] = []
+    for extra in ((), ("--output", str(out)), ("--allow-outside", "--output", str(out))):
+        # through the evaluator's own process, as on the command line
+        status = log_commands.replay(
+            options("replay", str(path), *extra), said.append, said.append, lambda question: False)
+        assert status == 0, said
+        assert (home / "w.csv").read_text() == "mine"
+    assert (out / "w.csv").read_text() == table
+    assert sorted(p.name for p in home.iterdir()) == ["demo.span", "w.csv"]
 
 
 @pytest.mark.parametrize("target", [
@@ -379,6 +411,20 @@ def test_what_is_told_holds_no_terminal_commands(tmp_path: Path) -> None:
     assert status == 1
     assert not any("\x1b" in line or "\x07" in line for line in said)
     assert any("\\x1b[32m" in line for line in said)
+
+
+def test_side_by_side_parts_a_sum_and_leaves_a_table_in_lines() -> None:
+    rows = side_by_side("E_(2,0) +\n  E_(0,2)", "E_(2,0) - E_(0,2)")
+    assert rows[2:] == ["… 1 equal piece …", f"{'+ E_(0,2)':<47} | - E_(0,2)"]
+    rows = side_by_side("mu     f\n(2,0)  x_1 + x_2", "mu     f\n(2,0)  x_1 - x_2")
+    assert rows[2:] == ["… 1 equal piece …", f"{'(2,0)  x_1 + x_2':<47} | (2,0)  x_1 - x_2"]
+
+
+def test_a_long_difference_is_cut(tmp_path: Path) -> None:
+    path = tmp_path / "demo.span"
+    write_log(path, "fix n = 4\nexpand (x_1 + x_2 + x_3 + x_4)^6 in x")
+    _, said, _ = run(str(path), "--terms", "5")
+    assert len(said) < 60 and any("more rows" in line for line in said), said
 
 
 def test_side_by_side_of_long_and_empty_results() -> None:

@@ -170,6 +170,16 @@ def test_article_has_tags_and_links() -> None:
     assert r"\emph{fails}:" in text and r"\begin{tabular}" in text
 
 
+@pytest.mark.parametrize("ending", [".html", ".tex", ".md"])
+def test_a_report_says_how_sure_it_is_and_of_how_many_cases(ending: str) -> None:
+    text = report([
+        "fix n = 2", "for mu in compositions(2): claim E_mu = E_mu", "fix certainty = random",
+        "claim x_1 E_(1,0) = E_(2,0) + x_1 E_(1,0) - E_(2,0)", "claim x_1 = x_2"], ending)
+    assert "3 cases: 3 held" in text
+    assert "with high probability" in text
+    assert "refuted at" in text
+
+
 def test_long_results_are_folded_and_parted() -> None:
     _, tree = page(["fix n = 4", "expand E_(0,0,3,1) in x"])
     (folded,) = [e for e in elements(tree, "details") if e.get("class") == "more"]

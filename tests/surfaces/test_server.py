@@ -13,6 +13,7 @@ import subprocess
 import sys
 import time
 from collections.abc import AsyncIterator, Iterator
+from contextlib import contextmanager
 from itertools import count
 from pathlib import Path
 from random import Random
@@ -447,6 +448,23 @@ async def test_results_appear_and_only_what_changed_is_computed(
     assert await script.hints() == ["3: (1) = 2 x_1", "4: does not hold", "6: (2) = x_2^2"]
 
 
+async def test_hints_are_whole_terms_and_say_how_many_cases_held(
+    client: LanguageClient, tmp_path: Path
+) -> None:
+    text = (
+        "fix n = 2\nfor i in 1..2:\n  claim x_i = x_i\nend\nexpand (x_1 + x_2 + q)^4 in x\n"
+    )
+    script = Script(client, text, tmp_path)
+    await script.findings()
+    await script.run("spanwright.evaluateAll")
+    held, expanded = await script.hints()
+    assert held == "4: holds (2 cases: 2 held)"
+    # 15 monomials x_1^a x_2^b with a + b <= 4
+    label, _, rest = expanded.partition(" + … (")
+    assert label.startswith("5: (") and rest.endswith(" more terms)")
+    assert label.count(" + ") + 1 + int(rest.split()[0]) == 15
+
+
 async def test_stopping_an_evaluation_is_quick_and_keeps_what_came_before(
     client: LanguageClient, tmp_path: Path
 ) -> None:
@@ -515,9 +533,9 @@ async def test_a_lost_evaluator_costs_one_sentence(
 class Wire:
     """The bare pipes of a server."""
 
-    def __init__(self) -> None:
+    def __init__(self, command: list[str]) -> None:
         self.process = subprocess.Popen(
-            COMMAND, stdin=subprocess.PIPE, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL
+            command, stdin=subprocess.PIPE, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL
         )
         assert self.process.stdin is not None and self.process.stdout is not None
         self.numbers = count(1)
@@ -559,10 +577,23 @@ class Wire:
         self.send(b'{"jsonrpc": "2.0", "method": "initialized", "params": {}}')
 
 
+@contextmanager
+def wired(command: list[str]) -> Iterator[Wire]:
+    """A wire to a server that is ended afterwards."""
+    found = Wire(command)
+    try:
+        yield found
+    finally:
+        _end(found)
+
+
 @pytest.fixture
 def wire() -> Iterator[Wire]:
-    found = Wire()
-    yield found
+    with wired(COMMAND) as found:
+        yield found
+
+
+def _end(found: Wire) -> None:
     found.process.kill()
     found.process.wait()
     for stream in (found.process.stdin, found.process.stdout):
@@ -689,6 +720,32 @@ async def test_one_client_over_tcp() -> None:
         link.sendall(b"noise\r\nContent-Length: %d\r\n\r\n" % len(body) + body)
         assert link.recv(15) == b"Content-Length:"
         link.close()
+        assert process.wait(timeout=20) == 0
+    finally:
+        process.kill()
+        process.wait()
+
+
+async def test_the_command_line_starts_the_same_server(tmp_path: Path) -> None:
+    command = [sys.executable, "-m", "spanwright", "serve"]
+    with wired(command) as wire:
+        wire.start()
+        uri = (tmp_path / "a.span").as_uri()
+        wire.send(json.dumps({"jsonrpc": "2.0", "method": "textDocument/didOpen", "params": {
+            "textDocument": {
+                "uri": uri, "languageId": "s", "version": 1, "text": "fix n = 2; x_3\n"},
+        }}).encode())  # fmt: skip
+        number = wire.ask("textDocument/diagnostic", {"textDocument": {"uri": uri}})
+        (found,) = wire.answer(number)["result"]["items"]
+        assert found["code"] == "position-out-of-range"
+        assert wire.answer(wire.ask("shutdown", None))["result"] is None
+        wire.send(b'{"jsonrpc": "2.0", "method": "exit"}')
+        assert wire.process.wait(timeout=20) == 0
+    with socket.create_server(("127.0.0.1", 0)) as probe:
+        port = probe.getsockname()[1]
+    process = subprocess.Popen([*command, "--tcp", str(port)], stderr=subprocess.DEVNULL)
+    try:
+        (await _connected(port, process)).close()
         assert process.wait(timeout=20) == 0
     finally:
         process.kill()

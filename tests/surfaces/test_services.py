@@ -9,7 +9,7 @@ import pytest
 from spanwright import Session, services, settings
 from spanwright.rendering import forms
 from spanwright.replies import State
-from spanwright_grammar.completion import FORMS, SETTING_WORDS
+from spanwright_grammar.vocabulary import FORMS, by_kind
 
 CURSOR = "▮"
 STATE = State(3, None, ("a",), {"f": "a polynomial", "mu": "an index"}, 4)
@@ -83,14 +83,34 @@ def test_what_is_still_being_typed_is_no_fault(text: str, codes: list[str]) -> N
 
 
 @pytest.mark.parametrize(
-    "text", ["E_(1,0)", "x_4", "T_3 x_1", "zork", "x_1 +", "fix nn = 3", "tau_3 x_1"]
+    "text", ["E_(1,0)", "x_4", "T_3 x_1", "zork", "x_1 +", "fix nn = 3", "tau_3 x_1",
+             "E_12", "E_1", "atom_2000", "eps_4", "fix show = shrt", "fix hecke = 2",
+             "show x_1 as latx", "expnad x_1 in E", "cliam x_1 = x_1"]
 )
 def test_what_is_found_early_is_what_the_session_finds(text: str) -> None:
     (early,) = services.diagnostics(text, State(3, None, (), {}, 0))
     (late,) = Session(n=3).run(text).diagnostics
-    assert (early.code, early.message) == (late.code, late.message)
+    assert (early.code, early.message, early.hints[:1]) == (
+        late.code, late.message, late.hints[:1]
+    )
+
+
+@pytest.mark.parametrize("setting", [entry.name for entry in by_kind("setting")])
+def test_what_is_proposed_for_a_setting_is_taken(setting: str) -> None:
+    for value in inserts(f"fix {setting} = ▮"):
+        if setting in ("q", "t") and value not in ("free", "q", "t"):
+            continue  # expressions: any name that may begin one
+        outcome = Session(n=3).run(f"fix {setting} = {value}")
+        is_itself = setting == value
+        assert is_itself or outcome.status == "ok", (setting, value, outcome.text)
+    is_free = Session(n=3).run(f"fix {setting} = free").status == "ok"
+    assert is_free == ("free" in inserts(f"fix {setting} = ▮"))
 
 
 def test_the_words_of_settings_and_forms_are_those_that_are_taken() -> None:
-    assert SETTING_WORDS == settings.WORDS
+    for name, words in settings.WORDS.items():
+        (entry,) = (found for found in by_kind("setting") if found.name == name)
+        assert all(word in entry.inputs for word in words)
+        for word in words:
+            assert Session(n=3).run(f"fix {name} = {word}").status == "ok"
     assert set(FORMS) == set(forms.NAMES)

@@ -22,13 +22,13 @@ from prompt_toolkit.output import DummyOutput
 
 from spanwright import Session
 from spanwright.conversation import LocalConversation
+from spanwright.rendering.wrapping import broken
 from spanwright.replies import Progress, Reply, State
 from spanwright.shell import loop
 from spanwright.shell.colouring import LineLexer
 from spanwright.shell.display import (
     Line,
     Screen,
-    broken,
     elapsed,
     fitting,
     progress_text,
@@ -232,7 +232,18 @@ def typed(keys: str, *, history: tuple[str, ...] = (), state: State = STATE) -> 
         # Ctrl-C clears the line.
         ("zork +\x03x_1\r", "x_1"),
         # Pasted text opens no menu, and its line ends run nothing.
-        ("\x1b[200~x_1\ndeg\tree\x1b[201~\r", "x_1\ndeg\tree"),
+        ("\x1b[200~x_1\ndeg\tree\x1b[201~\r", "x_1\ndeg ree"),
+        ("\x1b[200~deg\tree\x1b[201~\r", "deg\tree"),
+        # A pasted block comes into house style; a part of a sentence stays as it is.
+        ("\x1b[200~for i in 1..2:\r\nx_i+1  # why\r\nend\r\n\x1b[201~\r",
+         "for i in 1..2:\n  x_i + 1  # why\nend\n"),
+        ("\x1b[200~x_1+x_2\x1b[201~\r", "x_1+x_2"),
+        ("f + \x1b[200~(x_1+\nx_2)\x1b[201~\r", "f + (x_1+\nx_2)"),
+        # F2: the cursor stays with what it stood behind, and Ctrl-_ takes it back.
+        ("x_1+x_2\x1b[12~\r", "x_1 + x_2"),
+        ("x_1+x_2\x1b[D\x1b[D\x1b[12~9\r", "x_1 + x9_2"),
+        ("x_1+x_2\x1b[12~\x1f\r", "x_1+x_2"),
+        ("x_1 + (\x1b[12~x_2)\r", "x_1 + (x_2)"),
         ("\x1b[200~τ_1 E_μ\x1b[201~ + 1\r", "τ_1 E_μ + 1"),
     ],
 )
@@ -435,6 +446,25 @@ def test_the_menu_and_what_is_wrong_stand_below_the_line(tmp_path: Path) -> None
         child.expect(pexpect.EOF)
 
 
+def test_keys_explain_and_set_right_on_a_terminal(tmp_path: Path) -> None:
+    with shell(tmp_path) as child:
+        child.expect(styled(FREE))
+        child.send("fix n = 3\r")
+        child.expect(styled(RING))
+        child.send("x_1+E_(2,0,1)\x1bOP")
+        child.expect("Haglund")
+        child.send("\x1b[12~\r")
+        child.expect(r"\(1\)")
+        child.expect(styled(RING))
+        child.send("\x1b[200~let  g=x_1\nlet  k=g\x1b[201~\r")
+        child.expect("k = x_1")
+        child.expect(styled(RING))
+        child.send("\x04")
+        child.expect(pexpect.EOF)
+    kept = list(EntryHistory(tmp_path / "spanwright" / "entries.jsonl").load_history_strings())
+    assert kept == ["let g = x_1\nlet k = g", "x_1 + E_(2,0,1)", "fix n = 3"]
+
+
 def test_control_c_stops_a_sentence_and_keeps_the_session(tmp_path: Path) -> None:
     with shell(tmp_path) as child:
         child.expect(styled(FREE))
@@ -494,3 +524,17 @@ def test_a_history_that_cannot_be_written_is_no_fault(tmp_path: Path) -> None:
         child.expect(styled(RING))
         child.send("\x04")
         child.expect(pexpect.EOF)
+
+
+def test_a_log_that_cannot_be_gone_on_in_opens_no_empty_session(tmp_path: Path) -> None:
+    said: list[str] = []
+
+    def write(lines: list[Line]) -> None:
+        said.extend("".join(text for _, text in line) for line in lines)
+
+    def ask(state: State) -> str:
+        raise AssertionError("nothing is asked")
+
+    conversation = LocalConversation(Session())
+    assert loop._logged(conversation, ask, write, tmp_path / "missing.span") == 2
+    assert any("not brought back" in line and "missing.span" in line for line in said)

@@ -17,12 +17,14 @@ from spanwright.kernel.errors import OverBudget
 class Budget:
     """Limits for one sentence: `is_spent` says why work must stop, `max_terms` bounds a result.
 
+    A result that would take more than `max_bytes` is not begun.
     `report` is told what has been reached, as often as long work looks here.
     """
 
     is_spent: Callable[[], str | None] = lambda: None
     max_terms: int = 2_000_000
     report: Callable[[str], None] | None = None
+    max_bytes: int = 4 * 10**9
 
     def check(self) -> None:
         """Raise OverBudget when the time is over or somebody cancelled."""
@@ -40,6 +42,20 @@ class Budget:
         if self.report is not None:
             self.report(f"{what.replace('this ', 'a ', 1)} of about {n_terms:,} terms")
         self.check()
+
+    def check_size(self, n_terms: int, bits: int, what: str) -> None:
+        """Raise OverBudget when so many terms of numbers below 2^bits cannot be held.
+
+        Numbers of a product are on average more than half as long as the longest.
+        """
+        size = n_terms * (bits // 16)
+        if size > self.max_bytes:
+            raise OverBudget(
+                f"{what} would have about {n_terms:,} terms with numbers of up to "
+                f"{bits * 30103 // 100000:,} digits, which need more than "
+                f"{self.max_bytes / 10**9:.2g} GB of memory",
+                code="too-large",
+            )
 
 
 _in_force: ContextVar[Budget] = ContextVar("spanwright_budget", default=Budget())

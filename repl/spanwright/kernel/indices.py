@@ -241,8 +241,11 @@ def covers(w: Permutation) -> Iterator[tuple[int, int, Permutation]]:
                 yield a + 1, b + 1, tuple(found)
 
 
-def bruhat_leq(u: Permutation, v: Permutation) -> bool:
-    """Whether u <= v in Bruhat order (tableau criterion, Ehresmann 1934)."""
+def is_bruhat_below(u: Permutation, v: Permutation) -> bool:
+    """Whether u <= v in Bruhat order, by the tableau criterion.
+
+    Ehresmann, Sur la topologie de certains espaces homogenes (1934).
+    """
     n = max(len(u), len(v))
     u, v = extended(u, n), extended(v, n)
     for k in range(1, n):

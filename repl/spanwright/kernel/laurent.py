@@ -7,8 +7,8 @@ denominator divides them all, and the term with the largest exponent has a posit
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Mapping
-from math import comb
+from collections.abc import Callable, Collection, Iterable, Iterator, Mapping, Sequence
+from math import comb, log2, prod
 from typing import Any
 
 from flint import Ordering, fmpq, fmpz, fmpz_mpoly, fmpz_mpoly_ctx
@@ -273,13 +273,7 @@ class LaurentPolynomial:
             return LaurentPolynomial.reduced(
                 self.n, self.ring, {tuple(k * exponent for k in e): self.ring.one},
                 (Scalar.of_polynomial(self.ring, c) * self.scale) ** exponent)
-        if self.terms:
-            n_terms = comb(min(exponent, 10**7) + len(self.terms) - 1, len(self.terms) - 1)
-            spread = 1
-            for k in range(self.n):
-                column = [e[k] for e in self.terms]
-                spread *= (max(column) - min(column)) * exponent + 1
-            budget.current().check_terms(min(n_terms, spread), "this power")
+        _check_power(self, exponent)
         result = self
         for bit in bin(exponent)[3:]:
             result = result * result
@@ -420,18 +414,60 @@ def multiplied(a: LaurentPolynomial, b: LaurentPolynomial) -> Terms:
     n_products = len(a.terms) * len(b.terms)
     if len(a.terms) == 1 or len(b.terms) == 1 or n_products < PACKING_THRESHOLD:
         return _convolved(a.terms, b.terms)
-    budget.current().check_terms(min(n_products, _box(a, b)), "this product")
+    check_product([a, b])
     packed_a, low_a = packed(a.ring, a.n, a.terms)
     packed_b, low_b = packed(b.ring, b.n, b.terms)
     return unpacked(a.ring, a.n, packed_a * packed_b, tuple(map(int.__add__, low_a, low_b)))
 
 
-def _box(a: LaurentPolynomial, b: LaurentPolynomial) -> int:
-    size = 1
-    for k in range(a.n):
-        ka, kb = [e[k] for e in a.terms], [e[k] for e in b.terms]
-        size *= max(ka) - min(ka) + max(kb) - min(kb) + 1
-    return size
+def check_product(factors: Sequence[LaurentPolynomial]) -> None:
+    """Raise OverBudget when a product of polynomials is too large to be begun."""
+    if not all(f.terms for f in factors):
+        return
+    n_terms = min(prod(len(f.terms) for f in factors), _box([f.terms for f in factors]))
+    budget.current().check_terms(n_terms, "this product")
+
+
+def _check_power(base: LaurentPolynomial, exponent: int) -> None:
+    if not base.terms:
+        return
+    box = _box([base.terms], exponent)
+    budget.current().check_terms(
+        min(_n_choices(len(base.terms), exponent), box), "this power")
+    n_joint = min(_n_choices(sum(map(len, base.terms.values())), exponent),
+                  box * _box([{m for c in base.terms.values() for m in monomials(c)}], exponent))
+    budget.current().check_size(n_joint, int(exponent * _sum_of_sizes(base)), "this power")
+
+
+def _n_choices(n_terms: int, exponent: int) -> int:
+    """How many monomials of this degree there are in so many letters, up to a large number."""
+    if min(n_terms - 1, exponent) > 50:
+        return 10**30
+    return comb(exponent + n_terms - 1, n_terms - 1)
+
+
+def _box(factors: Sequence[Collection[Exponents]], power: int = 1) -> int:
+    """How many exponents a product of polynomials, or of their powers, may have at most."""
+    spreads = [
+        [max(column) - min(column) for column in zip(*((sum(e), *e) for e in f), strict=True)]
+        for f in factors]
+    n_degrees, *sides = [int(sum(column)) * power + 1 for column in zip(*spreads, strict=True)]
+    if not sides:
+        return 1
+    size: int = prod(sides)
+    n = len(sides)
+    # how far the degree goes above the corner of the least exponents: a simplex, cut off below
+    height = power * sum(
+        max(map(sum, f)) - sum(min(column) for column in zip(*f, strict=True)) for f in factors)
+    simplex = comb(height + n, n) - comb(height + n - n_degrees, n)
+    # the degree and all exponents but one leave no choice
+    return min(size, size // max(sides) * n_degrees, simplex)
+
+
+def _sum_of_sizes(polynomial: LaurentPolynomial) -> float:
+    """The binary logarithm of the sum of all absolute values, which bounds those of products."""
+    numbers = (abs(number) for c in polynomial.terms.values() for number in c.coeffs())
+    return log2(int(sum(numbers, fmpz(0))))
 
 
 def _convolved(a: Terms, b: Terms) -> Terms:

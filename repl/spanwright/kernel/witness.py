@@ -2,7 +2,8 @@
 
 Polynomials in x keep their exponents; their coefficients are residues. Two different elements of
 Q(q,t)[x] agree at a random point with probability at most d/p, d the degree in the parameters of
-the numerator of their difference (Schwartz 1980, Zippel 1979); `height` bounds it.
+the numerator of their difference (Schwartz, Fast probabilistic algorithms for verification of
+polynomial identities, 1980); `height` bounds it.
 """
 
 from __future__ import annotations

@@ -173,13 +173,15 @@ def _result(entry: Entry, document: Document) -> str:
         return _table(entry.grid)
     value = entry.value
     if isinstance(value, Truth):
+        said = "\n" + _said("\n".join(entry.notes)) if entry.notes else ""
         word = r"\emph{holds}" if value.holds else r"\emph{fails}"
         tag = rf"\tag{{{entry.tag}}}{_anchor(entry, document)}" if entry.tag is not None else ""
         if value.difference is None:
             inner = rf"\text{{{word}}}{tag}"
-            return f"\\begin{{equation*}}\n{inner}\n\\end{{equation*}}"
+            return f"\\begin{{equation*}}\n{inner}\n\\end{{equation*}}{said}"
         head = rf"\text{{{word}:}}\quad \text{{left}} - \text{{right}} = "
-        return displayed(_headed(head, pieces(value.difference, LINE, width_of(head))), tag)
+        shown = displayed(_headed(head, pieces(value.difference, LINE, width_of(head))), tag)
+        return shown + said
     tag = rf"\tag{{{entry.tag}}}{_anchor(entry, document)}" if entry.tag is not None else ""
     head = f"{tex_name(entry.name)} = " if entry.name else ""
     lines = _headed(head, pieces(value, LINE, width_of(head)))

@@ -40,7 +40,8 @@ class Entry:
 
     `prose` are paragraphs before it. `code` is the input in coloured pieces (kind, text), empty
     for a remark. `value` is None when the result is no value or was not recorded whole; `name`
-    is that of a definition, `cut` says what the log left out.
+    is that of a definition, `cut` says what the log left out. `notes` say how sure a claim is,
+    and how many cases were tried.
     """
 
     line: int
@@ -56,6 +57,7 @@ class Entry:
     grid: Grid | None = None
     picture: str = ""
     digest: str = ""
+    notes: tuple[str, ...] = ()
 
     @property
     def typed(self) -> str:

@@ -222,7 +222,9 @@ def _result(entry: Entry) -> str:
         if not entry.text:
             return ""
         return _with_tag(entry, f'<pre class="value">{_escaped(entry.text)}{_cut(entry)}</pre>')
-    return _with_tag(entry, f'<div class="value">{_formula(entry)}</div>') + _forms(entry)
+    notes = "".join(f'<p class="note">{_escaped(line)}</p>' for line in entry.notes)
+    return _with_tag(
+        entry, f'<div class="value">{_formula(entry)}{notes}</div>') + _forms(entry)
 
 
 def _with_tag(entry: Entry, inner: str) -> str:

@@ -32,11 +32,14 @@ def term_lines(value: Any, show: str = "short") -> tuple[str, ...]:
     return tuple(rows)
 
 
-def note(value: Any, n: int | None) -> str:
-    """Where a result lives, when the ring in force does not say it: an algebra, more variables."""
+def note(value: Any, n: int | None, convention: str = "standard") -> str:
+    """Where a result lives, when what is in force does not say it: an algebra, more variables."""
     if is_operator(value) and hasattr(value, "algebra"):
         letters = ", ".join(value.letters)
         return f"{value.algebra}, letters {letters}" if letters else "scalar"
     if isinstance(value, LaurentPolynomial | Expansion) and n is not None and value.n > n:
         return f"needs {value.n} variables"
+    if isinstance(value, Expansion) and value.family.name in ("E", "E (reversed)"):
+        own = "reversed" if value.family.name == "E (reversed)" else "standard"
+        return f"in the {own} convention" if own != convention else ""
     return ""

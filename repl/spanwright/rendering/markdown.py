@@ -76,6 +76,7 @@ def _entry(entry: Entry, document: Document) -> list[str]:
         parts.append(_table(entry.grid))
     elif entry.value is not None:
         parts.append(_formula(entry))
+        parts += [prose(line) for line in entry.notes]
     elif entry.text:
         parts.append(fenced(entry.text))
         if entry.tag is not None:

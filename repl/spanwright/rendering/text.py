@@ -6,7 +6,9 @@ from fractions import Fraction
 from typing import Any
 
 from spanwright.kernel.coefficients import Scalar
+from spanwright.kernel.errors import KernelError
 from spanwright.kernel.expansions import Expansion
+from spanwright.kernel.families.symmetric_base import NotSymmetric
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import TEXT, Style, scalar_text
 from spanwright.tally import Tally, tally_text
@@ -24,6 +26,9 @@ from spanwright.values import (
     is_number,
     is_operator,
 )
+
+LONGEST_DIFFERENCE = 400
+"""Characters of a polynomial inside a message."""
 
 
 def text(value: Any, show: str = "short") -> str:
@@ -175,6 +180,16 @@ def table_text(value: Table, show: str = "short") -> str:
         lines.append("  ".join(c.ljust(w) for c, w in zip(row, widths, strict=True)).rstrip())
     lines += value.notes
     return "\n".join(lines)
+
+
+def by_how_much(error: KernelError) -> str:
+    """What a message adds when s_i moves a polynomial: f - s_i f, or its size when it is long."""
+    if not isinstance(error, NotSymmetric):
+        return ""
+    by = text(error.difference)
+    name = f"f - s_{error.position} f"
+    return f" by {name} = {by}" if len(by) <= LONGEST_DIFFERENCE \
+        else f"; {name} has {len(error.difference):,} terms"
 
 
 def element_value(value: Any) -> Scalar | LaurentPolynomial | Expansion | None:

@@ -106,6 +106,9 @@ def _shortened(text: str, terms: tuple[str, ...]) -> str:
     line = " ".join(text.split("\n")[0].split())
     if len(line) <= SHORT and "\n" not in text:
         return line
+    remark = next((row[2:] for row in text.split("\n")[1:2] if row.startswith("# ")), "")
+    if remark and len(line) + len(remark) + 3 <= SHORT:
+        return f"{line} ({remark})"
     if len(terms) > 1:
         shown, n_shown = "", 0
         for term in terms:
@@ -114,7 +117,8 @@ def _shortened(text: str, terms: tuple[str, ...]) -> str:
                 break
             shown, n_shown = longer, n_shown + 1
         if shown:
-            return f"{shown} + … ({len(terms) - n_shown} more terms)"
+            n_more = len(terms) - n_shown
+            return f"{shown} + … ({n_more} more {'term' if n_more == 1 else 'terms'})"
     return line[: SHORT - 2] + " …"
 
 

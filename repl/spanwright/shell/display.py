@@ -8,10 +8,10 @@ from __future__ import annotations
 import textwrap
 import unicodedata
 from bisect import bisect_right
-from collections.abc import Iterator
 from itertools import accumulate, islice, zip_longest
 from typing import NamedTuple
 
+from spanwright.rendering.wrapping import CONTINUED, broken
 from spanwright.replies import Progress, Reply, State
 
 Piece = tuple[str, str]
@@ -19,7 +19,6 @@ Piece = tuple[str, str]
 Line = list[Piece]
 
 INDENT = 2
-CONTINUED = "  "
 LEAST_ROWS = 8
 ROWS_LEFT_FREE = 6
 LONGEST_SENTENCE = 50
@@ -201,45 +200,7 @@ def prose(text: str, width: int) -> list[str]:
     return rows
 
 
-# --- Breaking lines ------------------------------------------------------------------------------
-
-
-def broken(text: str, width: int) -> Iterator[tuple[str, int]]:
-    """The text in rows of at most `width` columns where that can be, each with its end offset.
-
-    A row ends behind a sign outside all brackets, or else inside brackets: every break pastes back.
-    """
-    offset = 0
-    for line in text.split("\n"):
-        start, depth, lead = 0, 0, ""
-        while len(line) - start > width - len(lead):
-            end, depth = _row_end(line, start, width - len(lead), depth)
-            if end >= len(line):
-                break
-            yield lead + line[start:end], offset + end
-            start, lead = end + 1, CONTINUED * 2 if depth else CONTINUED
-        yield lead + line[start:], offset + len(line)
-        offset += len(line) + 1
-
-
-def _row_end(line: str, start: int, room: int, depth: int) -> tuple[int, int]:
-    """The space at which a row ends, with the number of brackets open there: as few as can be."""
-    best: tuple[int, int] | None = None
-    for place in range(start, len(line)):
-        if place - start > room and best is not None:
-            return best
-        sign = line[place]
-        if sign in "([{":
-            depth += 1
-        elif sign in ")]}":
-            depth = max(0, depth - 1)
-        elif sign == " " and place > start:
-            # Behind a sign with spaces around it; inside brackets any space that no sign follows.
-            is_behind_sign = line[place - 1] in "+-" and line[place - 2 : place - 1] == " "
-            may_end = is_behind_sign if depth == 0 else line[place + 1 : place + 2] not in "+-"
-            if may_end and (best is None or depth <= best[1]):
-                best = (place, depth)
-    return best or (len(line), depth)
+# --- Widths ---------------------------------------------------------------------------------------
 
 
 def cells(text: str) -> int:

@@ -7,11 +7,14 @@ from collections.abc import Callable
 from prompt_toolkit.application.current import get_app
 from prompt_toolkit.buffer import Buffer
 from prompt_toolkit.completion import CompleteEvent, get_common_complete_suffix
+from prompt_toolkit.document import Document
 from prompt_toolkit.filters import Condition, has_focus
 from prompt_toolkit.key_binding import KeyBindings, KeyPressEvent
 
 STEP = 2
 """Columns by which an open bracket or block moves the next line in."""
+SET_RIGHT_AT_MOST = 100_000
+"""Characters; a longer entry stays as it is."""
 
 
 def key_bindings(buffer: Buffer, toggle_explanation: Callable[[], None]) -> KeyBindings:
@@ -66,7 +69,42 @@ def key_bindings(buffer: Buffer, toggle_explanation: Callable[[], None]) -> KeyB
     def _(event: KeyPressEvent) -> None:
         toggle_explanation()
 
+    @keys.add("f2", filter=in_entry)
+    def _(event: KeyPressEvent) -> None:
+        set_right(buffer)
+
+    @keys.add("<bracketed-paste>", filter=in_entry)
+    def _(event: KeyPressEvent) -> None:
+        pasted = event.data.replace("\r\n", "\n").replace("\r", "\n")
+        is_alone = not buffer.text.strip()
+        buffer.insert_text(pasted)
+        # a block on its own; what is pasted into a sentence stays as it is
+        if is_alone and "\n" in pasted.strip("\n"):
+            set_right(buffer)
+
     return keys
+
+
+def set_right(buffer: Buffer) -> None:
+    """Bring the entry into house style, as one step that can be undone; the cursor stays with what
+    it stood behind."""
+    if len(buffer.text) > SET_RIGHT_AT_MOST:
+        return
+    from spanwright import services
+
+    before, offset = buffer.text, buffer.cursor_position
+    after = services.house_style(before)
+    if after == before:
+        return
+    # only spaces and line ends come and go: the cursor stands behind as many other signs as before
+    n_signs = len("".join(before[:offset].split()))
+    place = 0
+    while n_signs and place < len(after):
+        n_signs -= not after[place].isspace()
+        place += 1
+    buffer.save_to_undo_stack()
+    buffer.complete_state = None
+    buffer.document = Document(after, len(after) if offset == len(before) else place)
 
 
 def complete(buffer: Buffer) -> None:

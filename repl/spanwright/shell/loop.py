@@ -16,6 +16,7 @@ from spanwright.conversation import Conversation, local
 from spanwright.files import Folder
 from spanwright.replies import Progress, Reply, State
 from spanwright.shell.display import (
+    PLAIN_MARK,
     Line,
     Screen,
     greeting,
@@ -31,7 +32,8 @@ if TYPE_CHECKING:
 Ask = Callable[[State], str]
 Write = Callable[[list[Line]], None]
 
-FRESH = State(None, None, (), {}, 0)
+NOT_BROUGHT_BACK = 2
+"""The exit status when the log to go on in cannot be read, as for other unreadable files."""
 STOPPED: Line = [("class:message", "stopped; the session is as it was before this sentence")]
 CUT_OFF: Line = [("class:aside", "not shown further; recall lists what has been found")]
 
@@ -74,6 +76,10 @@ def _logged(
         else:
             journal = log_commands.bring_back(resumed, conversation, tell)
     except LogFailure as error:
+        if resumed is not None:
+            # what was asked for is not there: an empty session would only look like it
+            tell(f"not brought back: {error}")
+            return NOT_BROUGHT_BACK
         tell(f"no log is kept: {error}")
     try:
         return converse(conversation, ask, write, journal)
@@ -234,8 +240,6 @@ def _write_plainly(lines: list[Line]) -> None:
 
 def _ask_plainly(state: State) -> str:
     """An entry from a terminal that knows no cursor movement."""
-    from spanwright.shell.display import PLAIN_MARK
-
     lead = f"{ring_text(state)} {PLAIN_MARK} "
     text = input(lead)
     from spanwright import services

@@ -38,7 +38,10 @@ from spanwright.shell.keys import key_bindings
 MENU_ROWS = 8
 SEARCH_BACKWARD = "earlier entry with: "
 SEARCH_FORWARD = "later entry with: "
-EMPTY_BAR = "Tab what fits here · F1 explains · Ctrl-R earlier entries · Alt-Enter new line"
+EMPTY_BAR = (
+    "Tab what fits here · F1 explains · F2 house style · Ctrl-R earlier entries · "
+    "Alt-Enter new line"
+)
 CHECKED_AT_MOST = 20_000
 """Characters; a longer entry is checked when it is run."""
 

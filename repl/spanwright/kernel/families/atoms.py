@@ -11,10 +11,11 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from spanwright.kernel.families.base import Coefficients, Family, Index, check_composition
+from spanwright.kernel.families.base import Coefficients, Family, Index, shown
 from spanwright.kernel.families.derivations import Derivation, Row, integer
 from spanwright.kernel.families.keys import (
     Integers,
+    LeaderFamily,
     OrbitMemory,
     below,
     from_schubert,
@@ -32,7 +33,7 @@ from spanwright.kernel.families.packed import (
     to_laurent,
 )
 from spanwright.kernel.families.schubert import scalars
-from spanwright.kernel.indices import Composition, orbit, padded, swapped, trimmed
+from spanwright.kernel.indices import Composition, orbit, padded, swapped
 from spanwright.kernel.laurent import LaurentPolynomial
 
 
@@ -107,8 +108,8 @@ def key_derivation(alpha: Composition) -> Derivation:
         obstacle = None
         if beta not in present:
             obstacle = (
-                f"v_beta = {_shown(sorting_permutation(beta))} is not below "
-                f"v_alpha = {_shown(own)} in Bruhat order")
+                f"v_beta = {shown(sorting_permutation(beta))} is not below "
+                f"v_alpha = {shown(own)} in Bruhat order")
         rows.append(Row((), beta, integer(int(obstacle is None)), obstacle))
     return Derivation(
         "A key as a sum of atoms",
@@ -116,23 +117,10 @@ def key_derivation(alpha: Composition) -> Derivation:
         "Lascoux and Schuetzenberger, Keys and standard bases (1990)", tuple(rows))
 
 
-def _shown(index: Index) -> str:
-    return f"({','.join(map(str, index))})"
-
-
-class Atom(Family):
+class Atom(LeaderFamily):
     """atom_alpha, alpha a composition with n parts."""
 
     name = "atom"
-    index_kind = "composition"
-
-    def check_index(self, index: Index, n: int) -> Index:
-        """n parts, each at least 0."""
-        return check_composition(index, n, self.name)
-
-    def order_key(self, index: Index) -> tuple[object, ...]:
-        """Largest size first, then leading monomials, largest first (last variable decides)."""
-        return leader_order(index)
 
     def to_monomials(self, index: Index, n: int) -> LaurentPolynomial:
         """By isobaric differences from x^lambda."""
@@ -155,10 +143,6 @@ class Atom(Family):
         if other.name == "s":
             return scalars(from_key(from_schur(index, n)))
         return None
-
-    def n_variables(self, index: Index) -> int:
-        """The last position with a positive part."""
-        return len(trimmed(index))
 
 
 FAMILIES = {"atom": Atom()}

@@ -77,11 +77,17 @@ class Family(ABC):
         return index
 
 
+def shown(index: Index) -> str:
+    """An index as a message writes it."""
+    return f"({','.join(map(str, index))})"
+
+
 def check_composition(index: Index, n: int, name: str, *, least: int | None = 0) -> Index:
     """A composition with n parts, each at least `least`; raises OutsideDomain with the fact."""
     if len(index) != n:
+        counted = "1 part" if len(index) == 1 else f"{len(index)} parts"
         raise OutsideDomain(
-            f"{name}_({','.join(map(str, index))}) has {len(index)} parts, the ring has n = {n}",
+            f"{name}_{shown(index)} has {counted}, the ring has n = {n}",
             code="wrong-number-of-parts")
     if least is not None and any(part < least for part in index):
         raise OutsideDomain(

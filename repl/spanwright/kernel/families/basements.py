@@ -1,8 +1,9 @@
 """Permuted basements: E_(mu|w) = t^(-k) T_w E_mu, monic, in the E basis by the closed rules.
 
 k counts the pairs i < j with w(i) > w(j) and mu_i <= mu_j. The fillings of Haglund, Haiman and
-Loehr (2008) with basement w give the same polynomials up to a power of t; P. Alexandersson,
-Non-symmetric Macdonald polynomials and Demazure-Lusztig operators (2016).
+Loehr, A combinatorial formula for nonsymmetric Macdonald polynomials (2008), with basement w give
+the same polynomials up to a power of t; P. Alexandersson, Non-symmetric Macdonald polynomials
+and Demazure-Lusztig operators (2016).
 """
 
 from __future__ import annotations

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Protocol
 
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.families.base import Coefficients, Index
@@ -10,9 +11,25 @@ from spanwright.kernel.indices import Permutation, extended, reduced_size
 from spanwright.kernel.parameters import ParameterRing
 
 
+class RuleRow(Protocol):
+    """One term of a rule; each rule has its own row class, with its factors or its tableau."""
+
+    @property
+    def target(self) -> Index:
+        """The index that the term belongs to."""
+
+    @property
+    def coefficient(self) -> Scalar:
+        """What the term contributes, 0 for a vanishing one."""
+
+    @property
+    def obstacle(self) -> str | None:
+        """Why the term vanishes, in a few words."""
+
+
 @dataclass(frozen=True, slots=True)
 class Row:
-    """One term of a rule.
+    """One term of a rule whose coefficient is known at once.
 
     `steps` are the transpositions (a, b) of positions in the order in which they are applied, or
     positions (i,), or nothing. `obstacle` says in a few words why the term is 0; then the
@@ -27,12 +44,12 @@ class Row:
 
 @dataclass(frozen=True, slots=True)
 class Derivation:
-    """A rule applied once: its name, its statement, its source, and its rows."""
+    """A rule applied once: its name, its statement, its source, one row for each term."""
 
     rule: str
     statement: str
     reference: str
-    rows: tuple[Row, ...]
+    rows: tuple[RuleRow, ...]
 
     def result(self) -> Coefficients:
         """The sum of the rows."""

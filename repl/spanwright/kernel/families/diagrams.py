@@ -44,9 +44,11 @@ def boxes(partition: Partition) -> tuple[Box, ...]:
 
 
 def composition_boxes(mu: Composition) -> tuple[Box, ...]:
-    """The boxes of a composition with parts >= 0 (Haglund, Haiman and Loehr 2008).
+    """The boxes of a composition with parts >= 0.
 
-    leg = mu_i - j, arm = #{r < i : j <= mu_r <= mu_i} + #{r > i : j - 1 <= mu_r < mu_i}.
+    Haglund, Haiman and Loehr, A combinatorial formula for nonsymmetric Macdonald polynomials
+    (2008): leg = mu_i - j,
+    arm = #{r < i : j <= mu_r <= mu_i} + #{r > i : j - 1 <= mu_r < mu_i}.
     """
     return tuple(
         Box(i + 1, j,

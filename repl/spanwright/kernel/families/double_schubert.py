@@ -17,6 +17,7 @@ from spanwright.kernel.families.base import Coefficients, Family, Index
 from spanwright.kernel.families.derivations import Derivation, Row, cover_row, integer
 from spanwright.kernel.families.packed import DIGIT, digits, from_laurent, unpack
 from spanwright.kernel.families.schubert import (
+    PermutationFamily,
     Rows,
     check_permutation,
     check_variables,
@@ -307,15 +308,13 @@ def monk_derivation(w: Permutation, r: int) -> Derivation:
         "Kostant and Kumar, The nil Hecke ring and cohomology of G/P (1986)", tuple(rows))
 
 
-class DoubleSchubert(Family):
+class DoubleSchubert(PermutationFamily):
     """S_w(x; y), w a permutation."""
 
     name = "double Schubert"
-    index_kind = "permutation"
-    grows = True
 
     def check_index(self, index: Index, n: int) -> Index:
-        """Any permutation in one-line notation, trimmed; it may need more than n variables."""
+        """Any permutation, as for S, which the language writes for both."""
         return check_permutation(index, "S")
 
     def order_key(self, index: Index) -> tuple[object, ...]:
@@ -357,14 +356,6 @@ class DoubleSchubert(Family):
                     found[u] = d * c if known is None else known + d * c
             return {u: c for u, c in found.items() if not c.is_zero}
         return None
-
-    def n_variables(self, index: Index) -> int:
-        """The last descent."""
-        return n_variables(index)
-
-    def show_index(self, index: Index, n: int) -> Index:
-        """One-line notation; the identity as (1)."""
-        return index or (1,)
 
 
 FAMILIES = {"double Schubert": DoubleSchubert()}

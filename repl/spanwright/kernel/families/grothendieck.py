@@ -32,7 +32,7 @@ from spanwright.kernel.families.packed import (
 )
 from spanwright.kernel.families.schubert import (
     Integers,
-    check_permutation,
+    PermutationFamily,
     check_variables,
     first_rows,
     from_packed,
@@ -350,16 +350,10 @@ def monk_derivation(w: Permutation, r: int) -> Derivation:
         tuple(_chain_rows(w, _monk_order(w, r), r)))
 
 
-class Grothendieck(Family):
+class Grothendieck(PermutationFamily):
     """G_w, w a permutation, with parameter beta."""
 
     name = "G"
-    index_kind = "permutation"
-    grows = True
-
-    def check_index(self, index: Index, n: int) -> Index:
-        """Any permutation in one-line notation, trimmed; it may need more than n variables."""
-        return check_permutation(index, self.name)
 
     def order_key(self, index: Index) -> tuple[object, ...]:
         """Smallest length first, as powers of beta grow; then by one-line notation."""
@@ -394,14 +388,6 @@ class Grothendieck(Family):
     def convert_from(self, other: Family, index: Index, n: int) -> Coefficients | None:
         """From S, whatever number of variables it needs."""
         return from_schubert(index) if other.name == "S" else None
-
-    def n_variables(self, index: Index) -> int:
-        """The last descent."""
-        return n_variables(index)
-
-    def show_index(self, index: Index, n: int) -> Index:
-        """One-line notation; the identity as (1)."""
-        return index or (1,)
 
 
 FAMILIES = {"G": Grothendieck()}

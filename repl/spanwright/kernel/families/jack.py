@@ -1,7 +1,8 @@
 """Jack polynomials in the parameter alpha: the limit q = t^alpha, t -> 1 of P_lambda, exactly.
 
 In the tableau formula every factor 1 - q^a t^b goes to (alpha a + b)(1 - t), and the 1 - t
-cancel. Jack (1970); Stanley, Some combinatorial properties of Jack symmetric functions (1989);
+cancel. Jack, A class of symmetric polynomials with a parameter (1970);
+Stanley, Some combinatorial properties of Jack symmetric functions (1989);
 Macdonald, Symmetric Functions and Hall Polynomials (1995), VI.10.
 """
 
@@ -108,7 +109,10 @@ def integral_factor(partition: Partition) -> Scalar:
 
 
 def integral_jack(partition: Partition, n: int) -> LaurentPolynomial:
-    """J_lambda(x; alpha), coefficients in N[alpha] at m_mu (Knop and Sahi 1997)."""
+    """J_lambda(x; alpha), coefficients in N[alpha] at m_mu.
+
+    Knop and Sahi, A recursion and a combinatorial formula for Jack polynomials (1997).
+    """
     return jack(partition, n).scaled(integral_factor(partition))
 
 

@@ -238,10 +238,9 @@ def schubert_derivation(w: Permutation, n: int) -> Derivation:
         rows)
 
 
-class Key(Family):
-    """kappa_alpha, alpha a composition with n parts."""
+class LeaderFamily(Family):
+    """A basis indexed by compositions that is ordered by its leading monomials: keys, atoms."""
 
-    name = "kappa"
     index_kind = "composition"
 
     def check_index(self, index: Index, n: int) -> Index:
@@ -251,6 +250,16 @@ class Key(Family):
     def order_key(self, index: Index) -> tuple[object, ...]:
         """Largest size first, then leading monomials, largest first (last variable decides)."""
         return leader_order(index)
+
+    def n_variables(self, index: Index) -> int:
+        """The last position with a positive part."""
+        return len(trimmed(index))
+
+
+class Key(LeaderFamily):
+    """kappa_alpha, alpha a composition with n parts."""
+
+    name = "kappa"
 
     def to_monomials(self, index: Index, n: int) -> LaurentPolynomial:
         """By isobaric differences from x^lambda."""
@@ -279,10 +288,6 @@ class Key(Family):
         if other.name == "s":
             return scalars({from_schur(index, n): 1})
         return None
-
-    def n_variables(self, index: Index) -> int:
-        """The last position with a positive part."""
-        return len(trimmed(index))
 
 
 FAMILIES = {"kappa": Key()}

@@ -15,7 +15,8 @@ from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families import nonsymmetric_macdonald as nonsymmetric
-from spanwright.kernel.families.base import Coefficients, Family, Index, linear
+from spanwright.kernel.families.base import Coefficients, Family, Index, linear, shown
+from spanwright.kernel.families.derivations import Derivation, RuleRow
 from spanwright.kernel.families.diagrams import (
     Partition,
     boxes,
@@ -26,8 +27,6 @@ from spanwright.kernel.families.diagrams import (
 from spanwright.kernel.families.nonsymmetric_macdonald import ONE, one_minus, weights
 from spanwright.kernel.families.symmetric_base import (
     RING,
-    Explanation,
-    RuleRow,
     SymmetricFamily,
     applied_in_e,
     polynomial_of_monomial_symmetric,
@@ -231,14 +230,14 @@ def from_nonsymmetric(terms: Mapping[Index, Scalar], n: int) -> Coefficients:
         if mu == tuple(sorted(mu)) and not c.is_zero:
             if min(mu, default=0) < 0:
                 raise OutsideDomain(
-                    f"E_({','.join(map(str, mu))}) has a negative part", code="not-a-polynomial")
+                    f"E_{shown(mu)} has a negative part", code="not-a-polynomial")
             found[trimmed(decreasing(mu))] = c
     back = linear(found, lambda index: in_nonsymmetric(index, n))
     moved = [mu for mu, c in terms.items() if c != back.get(mu, 0)]
     moved += [mu for mu in back if mu not in terms]
     if moved:
         raise OutsideDomain(
-            f"the sum is not symmetric: see its coefficient at E_({','.join(map(str, moved[0]))})",
+            f"the sum is not symmetric: see its coefficient at E_{shown(moved[0])}",
             code="not-symmetric")
     return found
 
@@ -324,13 +323,13 @@ def multiply_by_row(partition: Partition, r: int, n: int) -> Coefficients:
         for outer in horizontal_strips_above(partition, r, n)}
 
 
-def derive_e(partition: Partition, r: int, n: int) -> Explanation:
+def derive_e(partition: Partition, r: int, n: int) -> Derivation:
     """e_r P_lambda explained: all vertical strips, those with too many parts included."""
     rows: list[RuleRow] = []
     for outer in vertical_strips_above(partition, r):
         obstacle = f"more than {n} parts" if len(outer) > n else None
         rows.append(PieriRow(outer, tuple(_vertical_factors(outer, partition)), obstacle))
-    return Explanation(
+    return Derivation(
         "Pieri rule for e_r P",
         "e_r P_lambda = sum of psi'_(mu/lambda) P_mu over vertical r-strips mu/lambda: the product "
         "of b_mu(s)/b_lambda(s) over boxes s of lambda whose column meets the strip and whose row "
@@ -338,7 +337,7 @@ def derive_e(partition: Partition, r: int, n: int) -> Explanation:
         REFERENCE, tuple(rows))
 
 
-def derive_row(partition: Partition, r: int, n: int) -> Explanation:
+def derive_row(partition: Partition, r: int, n: int) -> Derivation:
     """P_(r) P_lambda explained: all horizontal strips, those with too many parts included."""
     rows: list[RuleRow] = []
     unit = ratio_product((r,) if r else ()).inverse()
@@ -346,7 +345,7 @@ def derive_row(partition: Partition, r: int, n: int) -> Explanation:
         obstacle = f"more than {n} parts" if len(outer) > n else None
         rows.append(PieriRow(
             outer, (("1/b of the row", unit), *_horizontal_factors(outer, partition)), obstacle))
-    return Explanation(
+    return Derivation(
         "Pieri rule for P_(r) P",
         "P_(r) P_lambda = sum of phi_(mu/lambda)/b_(r) P_mu over horizontal r-strips mu/lambda: "
         "the product of b_mu(s)/b_lambda(s) over boxes s whose column meets the strip, "

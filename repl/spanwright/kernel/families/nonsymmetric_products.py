@@ -67,13 +67,6 @@ def _elementary(r: int, mu: Composition, power: int) -> Coefficients:
     return row[1]
 
 
-def macdonald_times_E(partition: Partition, mu: Composition) -> Coefficients:
-    """P_lambda E_mu in the E basis, through P_lambda in e; 0 for more than n parts."""
-    found = times_E(MACDONALD, partition, mu)
-    assert found is not None
-    return found
-
-
 def times_E(other: Family, index: Partition, mu: Composition) -> Coefficients | None:
     """An element of a symmetric family times E_mu in the E basis; None for other families."""
     if not isinstance(other, SymmetricFamily):

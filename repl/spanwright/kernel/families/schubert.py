@@ -8,7 +8,7 @@ Permutations here are trimmed: without fixed points at the end, the identity is 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from typing import Any
@@ -17,7 +17,7 @@ from flint import Ordering, fmpz_mpoly, fmpz_mpoly_ctx
 
 from spanwright.kernel import budget
 from spanwright.kernel.errors import OutsideDomain
-from spanwright.kernel.families.base import Coefficients, Family, Index
+from spanwright.kernel.families.base import Coefficients, Family, Index, shown
 from spanwright.kernel.families.derivations import (
     Derivation,
     Row,
@@ -66,16 +66,16 @@ def check_permutation(index: Index, name: str) -> Permutation:
     """A permutation in one-line notation, trimmed; raises OutsideDomain with what is wrong."""
     if is_permutation(index):
         return reduced_size(index)
-    shown = f"{name}_({','.join(map(str, index))})"
+    element = f"{name}_{shown(index)}"
     size = len(index)
     for value in index:
         if not 1 <= value <= size:
-            fact = f"{shown} is not indexed by a permutation: {value} is not one of 1..{size}"
+            fact = f"{element} is not indexed by a permutation: {value} is not one of 1..{size}"
             break
         if index.count(value) > 1:
             missing = min(set(range(1, size + 1)) - set(index))
             fact = (
-                f"{shown} is not indexed by a permutation: {value} occurs twice, "
+                f"{element} is not indexed by a permutation: {value} occurs twice, "
                 f"{missing} is missing")
             break
     raise OutsideDomain(fact, code="bad-index")
@@ -86,17 +86,12 @@ def n_variables(w: Permutation) -> int:
     return next((i for i in range(len(w) - 1, 0, -1) if w[i - 1] > w[i]), 0)
 
 
-def variables_needed(indices: Iterable[Permutation]) -> int:
-    """The number of variables in which all these S_w (or G_w) can be written."""
-    return max(map(n_variables, indices), default=0)
-
-
 def check_variables(w: Permutation, n: int, name: str) -> None:
     """Raise OutsideDomain when S_w or G_w needs more than n variables: nothing is cut off."""
     needed = n_variables(w)
     if needed > n:
         raise OutsideDomain(
-            f"{name}_({','.join(map(str, w))}) needs x_1, ..., x_{needed}, the ring has n = {n}",
+            f"{name}_{shown(w)} needs x_1, ..., x_{needed}, the ring has n = {n}",
             code="needs-more-variables", hints=(f"fix n = {needed}",))
 
 
@@ -590,11 +585,11 @@ def pieri_derivation(w: Permutation, r: int, k: int, kind: str) -> Derivation:
 def transition_derivation(w: Permutation) -> Derivation:
     """S_w = x_r S_v + the rows: every v t_ir, i < r, vanishing ones with the reason."""
     found = transition(w)
-    shown = ",".join(map(str, found.v)) or "1"
+    v = shown(found.v or (1,))
     return Derivation(
         "Transition",
-        f"S_w = x_{found.r} S_({shown}) + sum_(i < {found.r}) S_(v t_i{found.r}), "
-        f"v = w t_({found.r},{found.s}) = ({shown}), where the length is that of w",
+        f"S_w = x_{found.r} S_{v} + sum_(i < {found.r}) S_(v t_i{found.r}), "
+        f"v = w t_({found.r},{found.s}) = {v}, where the length is that of w",
         "Lascoux and Schuetzenberger, Schubert polynomials and the Littlewood-Richardson rule "
         "(1985)",
         tuple(cover_row(found.v, i, found.r, 1) for i in range(1, found.r)))
@@ -614,8 +609,8 @@ def product_derivation(u: Permutation, v: Permutation) -> Derivation:
     return Derivation(
         "Product of Schubert polynomials",
         "S_u S_v: the pipe dreams of S_u, row by row, act on S_v by Monk's rule for x_r",
-        "Monk (1959); Fomin and Kirillov, The Yang-Baxter equation, symmetric functions, and "
-        "Schubert polynomials (1996)", rows)
+        "Monk, The geometry of flag manifolds (1959); Fomin and Kirillov, The Yang-Baxter "
+        "equation, symmetric functions, and Schubert polynomials (1996)", rows)
 
 
 # the family
@@ -626,16 +621,29 @@ def scalars(terms: Mapping[Index, int]) -> Coefficients:
     return {index: integer(c) for index, c in terms.items() if c}
 
 
-class Schubert(Family):
-    """S_w, w a permutation."""
+class PermutationFamily(Family):
+    """A basis indexed by permutations; its elements may need more variables than there are."""
 
-    name = "S"
     index_kind = "permutation"
     grows = True
 
     def check_index(self, index: Index, n: int) -> Index:
         """Any permutation in one-line notation, trimmed; it may need more than n variables."""
         return check_permutation(index, self.name)
+
+    def n_variables(self, index: Index) -> int:
+        """The last descent."""
+        return n_variables(index)
+
+    def show_index(self, index: Index, n: int) -> Index:
+        """One-line notation; the identity as (1)."""
+        return index or (1,)
+
+
+class Schubert(PermutationFamily):
+    """S_w, w a permutation."""
+
+    name = "S"
 
     def order_key(self, index: Index) -> tuple[object, ...]:
         """Largest length first, then lexicographically by one-line notation."""
@@ -680,14 +688,6 @@ class Schubert(Family):
 
             return double_schubert.in_schubert(index)
         return None
-
-    def n_variables(self, index: Index) -> int:
-        """The last descent."""
-        return n_variables(index)
-
-    def show_index(self, index: Index, n: int) -> Index:
-        """One-line notation; the identity as (1)."""
-        return index or (1,)
 
 
 FAMILIES = {"S": Schubert()}

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.families.base import Coefficients, Family, Index
+from spanwright.kernel.families.derivations import Derivation
 from spanwright.kernel.families.diagrams import Partition
 from spanwright.kernel.families.littlewood_richardson import (
     REFERENCE,
@@ -16,16 +17,15 @@ from spanwright.kernel.families.littlewood_richardson import (
 from spanwright.kernel.families.symmetric_base import (
     RING,
     ClassicalFamily,
-    Explanation,
     scalars,
 )
 from spanwright.kernel.families.transitions import STRIPS, strips_on_schur
 from spanwright.kernel.indices import trimmed
 
 
-def derive_product(left: Partition, right: Partition, n: int | None = None) -> Explanation:
+def derive_product(left: Partition, right: Partition, n: int | None = None) -> Derivation:
     """s_left s_right with every tableau of the Littlewood-Richardson rule."""
-    return Explanation(
+    return Derivation(
         "Littlewood-Richardson rule",
         "s_lambda s_mu = sum of c^nu s_nu, c^nu the number of semistandard fillings of nu/lambda "
         "with content mu whose reading, rows from right to left and from the top down, is a "

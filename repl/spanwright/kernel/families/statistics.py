@@ -12,7 +12,7 @@ from collections.abc import Iterable, Mapping
 
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
-from spanwright.kernel.families.base import Index
+from spanwright.kernel.families.base import Index, shown
 from spanwright.kernel.families.diagrams import (
     Box,
     Partition,
@@ -102,7 +102,7 @@ def power_norm_P(partition: Partition) -> Scalar:
 def _check_parts(partition: Partition, n: int) -> None:
     if not is_partition(partition) or len(trimmed(partition)) > n:
         raise OutsideDomain(
-            f"({','.join(map(str, partition))}) is no partition with at most {n} parts",
+            f"{shown(partition)} is no partition with at most {n} parts",
             code="bad-index")
 
 
@@ -169,7 +169,7 @@ def principal_E(mu: Composition) -> Scalar:
     """E_mu(1, t, ..., t^(n-1)) in closed form, mu in Z^n.
 
     t^n(lambda) prod (1 - q^j t^(n+1-i)) over boxes of the sorted mu, over
-    prod (1 - q^(l+1) t^(a+1)) over boxes of mu (Cherednik 1995).
+    prod (1 - q^(l+1) t^(a+1)) over boxes of mu (Cherednik 1995, as above).
     """
     n = len(mu)
     mu, low = _raised(mu)

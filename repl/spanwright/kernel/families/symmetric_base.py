@@ -8,14 +8,12 @@ from __future__ import annotations
 
 from abc import abstractmethod
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from fractions import Fraction
-from typing import Protocol
 
 from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
-from spanwright.kernel.families.base import Coefficients, Family, Index, linear
+from spanwright.kernel.families.base import Coefficients, Family, Index, linear, shown
 from spanwright.kernel.families.diagrams import Partition
 from spanwright.kernel.families.transitions import transition
 from spanwright.kernel.indices import is_partition, orbit, padded, swapped, trimmed
@@ -39,40 +37,6 @@ class NotSymmetric(OutsideDomain):
             f"x_{position + 1}, moves it")
         self.position = position
         self.difference = difference
-
-
-class RuleRow(Protocol):
-    """One term of a rule; each rule has its own row class, with its factors or its tableau."""
-
-    @property
-    def target(self) -> Index:
-        """The index that the term belongs to."""
-
-    @property
-    def coefficient(self) -> Scalar:
-        """What the term contributes, 0 for a vanishing one."""
-
-    @property
-    def obstacle(self) -> str | None:
-        """Why the term vanishes, in a few words."""
-
-
-@dataclass(frozen=True, slots=True)
-class Explanation:
-    """A rule applied once: its name, its statement, its source, one row for each term."""
-
-    rule: str
-    statement: str
-    reference: str
-    rows: tuple[RuleRow, ...]
-
-    def result(self) -> Coefficients:
-        """The sum of the rows."""
-        collected: dict[Index, list[Scalar]] = {}
-        for row in self.rows:
-            collected.setdefault(row.target, []).append(row.coefficient)
-        found = {target: total(values) for target, values in collected.items()}
-        return {target: c for target, c in found.items() if not c.is_zero}
 
 
 def moving_transposition(polynomial: LaurentPolynomial) -> int | None:
@@ -128,11 +92,6 @@ def scalars(numbers: Mapping[Index, Fraction]) -> Coefficients:
     """Rational numbers as scalars."""
     return {
         index: Scalar.number(RING, c.numerator, c.denominator) for index, c in numbers.items()}
-
-
-def shown(index: Index) -> str:
-    """An index as a message writes it."""
-    return f"({','.join(map(str, index))})"
 
 
 def sum_of(left: Coefficients, right: Coefficients) -> Coefficients:

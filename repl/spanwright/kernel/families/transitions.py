@@ -59,7 +59,7 @@ def _border(shape: Partition, size: int, n: int) -> Iterator[tuple[int, Partitio
 
 
 STRIPS: dict[str, Strips] = {"h": _horizontal, "e": _vertical, "p": _border}
-"""g_k s_lambda = sum of signed s_mu over strips mu/lambda of size k (Pieri 1893 for h and e)."""
+"""g_k s_lambda = sum of signed s_mu over strips mu/lambda of size k: for h and e Pieri's rule."""
 
 
 def strips_on_schur(source: str, index: Partition, shape: Partition, n: int) -> Numbers:
@@ -198,7 +198,7 @@ def _determinant(rows: list[list[fmpq_mpoly]], n: int) -> fmpq_mpoly:
 
 
 def _jacobi_trudi(index: Partition, generators: tuple[fmpq_mpoly, ...], n: int) -> fmpq_mpoly:
-    """det(g_(lambda_i - i + j)) (Jacobi 1841, Trudi 1864; Macdonald 1995, I.3.4)."""
+    """det(g_(lambda_i - i + j)) (Jacobi and Trudi; Macdonald 1995, I.3.4)."""
     zero = _context(n).constant(0)
     size = range(len(index))
     return _determinant(
@@ -238,7 +238,7 @@ def _schur_into_p(index: Partition, n: int) -> Numbers:
 
 
 def character(shape: Partition, cycles: Partition) -> int:
-    """chi^shape at the class of cycle type `cycles` (Murnaghan 1937, Nakayama 1940)."""
+    """chi^shape at the class of cycle type `cycles` (Murnaghan's rule; Macdonald 1995, I.7)."""
     size = sum(shape)
     return 0 if sum(cycles) != size else int(
         _power_into_schur(cycles, max(size, 1)).get(shape, 0))

@@ -1,7 +1,9 @@
 """Operators acting: on polynomials by their defining formulas, on families by closed rules.
 
 On sums of E_mu the letters X, T, Y, T_pi, tau_i, tau_pi, symmetrizer act without monomials
-(Knop 1997; Cherednik 1995; Macdonald 2003; for X the closed product rule of the family).
+(Knop, Integrality of two variable Kostka functions, 1997; Cherednik, Nonsymmetric Macdonald
+polynomials, 1995; Macdonald, Affine Hecke Algebras and Orthogonal Polynomials, 2003; for X the
+closed product rule of the family).
 """
 
 from __future__ import annotations
@@ -58,7 +60,7 @@ def has_closed_rule(letter: Letter, basis: Family) -> bool:
         return letter.kind in CLOSED_ON_E
     if basis.index_kind == "partition":
         return letter.kind in _SYMMETRIC_KINDS
-    return (basis.name == "S" and letter.kind == "d") or (
+    return (basis.name in ("S", "double Schubert") and letter.kind == "d") or (
         basis.name in ("kappa", "atom") and letter.kind == "pi")
 
 
@@ -70,7 +72,8 @@ def act(operator: Operator, value: Value) -> Value:
     """
     if operator.n != value.n:
         raise Mixed(
-            f"an operator on {operator.n} variables and a polynomial in {value.n} variables")
+            f"an operator on {operator.n} variables and a polynomial in {value.n} variables",
+            hints=(f"fix n = {value.n}",))
     return _applied(operator, value)
 
 
@@ -474,7 +477,10 @@ def _on_symmetric(
 def _on_schubert(
     letter: Letter, basis: Family, n: int, terms: Mapping[Index, Scalar]
 ) -> Coefficients:
-    """d_i S_w = S_(w s_i) when w(i) > w(i+1), else 0 (Lascoux and Schuetzenberger 1982)."""
+    """d_i S_w = S_(w s_i) when w(i) > w(i+1), else 0; the same for S_w(x;y).
+
+    Lascoux and Schuetzenberger, Polynomes de Schubert (1982).
+    """
     def step(i: int, w: Index) -> Coefficients:
         w = indices.extended(w, max(n, len(w)))
         if w[i - 1] < w[i]:
@@ -487,7 +493,10 @@ def _on_schubert(
 def _on_keys(
     letter: Letter, basis: Family, n: int, terms: Mapping[Index, Scalar]
 ) -> Coefficients:
-    """pi_i on key polynomials and Demazure atoms (Demazure 1974; Reiner and Shimozono 1995)."""
+    """pi_i on key polynomials and Demazure atoms.
+
+    Reiner and Shimozono, Key polynomials and a flagged Littlewood-Richardson rule (1995).
+    """
     def step(i: int, index: Index) -> Coefficients:
         a = indices.padded(index, n)
         turned = basis.check_index(indices.swapped(a, i), n)
@@ -511,4 +520,5 @@ def _stepwise(
 
 
 _rules: dict[str, Rule] = {
-    "E": _on_e, "S": _on_schubert, "kappa": _on_keys, "atom": _on_keys}
+    "E": _on_e, "S": _on_schubert, "double Schubert": _on_schubert, "kappa": _on_keys,
+    "atom": _on_keys}

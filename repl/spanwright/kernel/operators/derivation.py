@@ -18,17 +18,23 @@ from spanwright.kernel.parameters import ParameterRing
 # A derivation longer than this is not for reading.
 MOST_STEPS = 300
 
-BERNSTEIN = "Bernstein relation (Lusztig 1989)"
+BERNSTEIN = "Bernstein relation"
 QUADRATIC = "quadratic relation"
 PRODUCT = "product of T_u and T_v"
 LENGTHS_ADD = "T_u T_v = T_(u v), as the lengths add"
 REDUCED_WORD = "reduced word"
 DEFINITION = "definition"
-TURN = "T_pi X_i = X_(i+1) T_pi, T_pi X_n = q^-1 X_1 T_pi (Cherednik 1995)"
+TURN = "T_pi X_i = X_(i+1) T_pi, T_pi X_n = q^-1 X_1 T_pi"
 LEIBNIZ = "Leibniz rule D_i f = (s_i f) D_i + correction"
 PERMUTATION = "w f = (w f) w"
 NIL = "d_i d_i = 0 and braid relations"
 ZERO = "pi_i pi_i = pi_i and braid relations"
+
+SOURCES = {
+    BERNSTEIN: "Lusztig, Affine Hecke algebras and their graded version (1989)",
+    TURN: "Cherednik, Double affine Hecke algebras and Macdonald's conjectures (1995)",
+}
+"""Where the relations that bear a name are published."""
 
 
 @dataclass(frozen=True)

@@ -2,7 +2,7 @@
 
 T_pi X^mu = q^(-mu_n) X^(mu_n, mu_1, ..., mu_(n-1)) T_pi, then T_pi T_w is a remembered sum of
 T_v Y_j; Y^nu is a word in T_i and T_pi (Cherednik, Double affine Hecke algebras and Macdonald's
-conjectures, 1995; Macdonald 2003). A sum without X meets Y^nu by its mirror image instead.
+conjectures, 1995). A sum without X meets Y^nu by its mirror image instead.
 """
 
 from __future__ import annotations

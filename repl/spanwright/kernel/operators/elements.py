@@ -195,6 +195,20 @@ class Algebra(ABC):
             found.append(current.scaled(c * normalising(word, self.n) if balanced else c))
         return total_element(found) if found else Element(self.ring, {}, element.scale)
 
+    def by_reduced_word(
+        self, letter: Letter, element: Element, power: Callable[[int, int, Element], Element]
+    ) -> Element:
+        """T_w^k * element, from `power(i, k, element)`, which is T_i^k * element."""
+        i = letter.simple_position()
+        if i is not None:
+            return power(i, letter.power, element)
+        word = indices.reduced_word(letter.subscript)
+        sign = 1 if letter.power > 0 else -1
+        for _ in range(abs(letter.power)):
+            for i in reversed(word) if sign > 0 else word:
+                element = power(i, sign, element)
+        return element
+
     def shifted(self, element: Element, mu: Exponents) -> Element:
         """X^mu * element."""
         rows = {tuple(map(int.__add__, nu, mu)): row for nu, row in element.rows.items()}

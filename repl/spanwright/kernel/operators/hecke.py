@@ -1,8 +1,8 @@
 """Finite and affine Hecke algebras of type GL_n: X^mu T_w, T_w Y^nu, T_w, the T_i plain.
 
 T_i f(X) = (s_i f)(X) T_i + (1-t) X_(i+1) (d_i f)(X), and its mirror image for Y under the
-anti-automorphism T_i -> T_i, X_i -> Y_i^-1 (Lusztig 1989; Cherednik; Macdonald, Affine Hecke
-algebras and orthogonal polynomials, 2003).
+anti-automorphism T_i -> T_i, X_i -> Y_i^-1 (Lusztig, Affine Hecke algebras and their
+graded version, 1989; Macdonald, Affine Hecke Algebras and Orthogonal Polynomials, 2003).
 """
 
 from __future__ import annotations
@@ -87,7 +87,7 @@ class HeckeAlgebra(Algebra):
         if letter.kind == "X":
             return self.shifted(element, letter.subscript)
         if letter.kind == "T":
-            return self._times_t(letter, element)
+            return self.by_reduced_word(letter, element, self.power)
         for _ in range(letter.power):
             if letter.kind == "symmetrizer":
                 element = self.symmetrized(element, lambda i, e: self.power(i, 1, e))
@@ -96,17 +96,6 @@ class HeckeAlgebra(Algebra):
                     element, lambda i, e: self.power(i, 1, e).scaled(-t_power(self.ring, -1)))
             else:
                 raise Mixed(f"{letter.kind} is not in the affine Hecke algebra")
-        return element
-
-    def _times_t(self, letter: Letter, element: Element) -> Element:
-        i = letter.simple_position()
-        if i is not None:
-            return self.power(i, letter.power, element)
-        word = indices.reduced_word(letter.subscript)
-        sign = 1 if letter.power > 0 else -1
-        for _ in range(abs(letter.power)):
-            for i in reversed(word) if sign > 0 else word:
-                element = self.power(i, sign, element)
         return element
 
     def power(self, i: int, k: int, element: Element) -> Element:

@@ -3,7 +3,8 @@
 Every letter is a sum of tau_w f(Y), w in the extended affine symmetric group, f rational:
 Y^nu tau_w = tau_w (w^-1 Y^nu), T_i = tau_i - (1-t)/(1 - Y_i^-1 Y_(i+1)),
 tau_i^2 = (1-tz)(t-z)/(1-z)^2 with z = Y_i^-1 Y_(i+1), X_1 = tau_pi T_(n-1) ... T_1 Y_1^-1
-(Cherednik 1995; Knop 1997; Macdonald 2003). The form is unique, so it decides identities.
+(Cherednik, Double affine Hecke algebras and Macdonald's conjectures, 1995; Knop, Integrality of two
+variable Kostka functions, 1997). The form is unique, so it decides identities.
 """
 
 from __future__ import annotations

@@ -1,12 +1,12 @@
 """The nilHecke algebra X^mu d_w: it holds d, and through X also pi, s and T.
 
-d_i f = (s_i f) d_i + (d_i f), d_i d_i = 0 (Bernstein, Gelfand and Gelfand 1973; Demazure 1974;
-Kostant and Kumar, The nil Hecke ring, 1986).
+d_i f = (s_i f) d_i + (d_i f), d_i d_i = 0 (Bernstein, Gelfand and Gelfand, Schubert cells
+and cohomology of the spaces G/P, 1973; Kostant and Kumar, The nil Hecke ring and cohomology of
+G/P, 1986).
 """
 
 from __future__ import annotations
 
-from spanwright.kernel import indices
 from spanwright.kernel.coefficients import Scalar
 from spanwright.kernel.operators.elements import (
     Algebra,
@@ -94,15 +94,7 @@ class DividedAlgebra(Algebra):
         if kind == "X":
             return self.shifted(element, letter.subscript)
         if kind == "T":
-            i = letter.simple_position()
-            if i is not None:
-                return self._power_of_t(i, letter.power, element)
-            word = indices.reduced_word(letter.subscript)
-            sign = 1 if letter.power > 0 else -1
-            for _ in range(abs(letter.power)):
-                for i in reversed(word) if sign > 0 else word:
-                    element = self._power_of_t(i, sign, element)
-            return element
+            return self.by_reduced_word(letter, element, self._power_of_t)
         if kind in ("symmetrizer", "antisymmetrizer"):
             factor = Scalar.one(self.ring) if kind == "symmetrizer" else -t_power(self.ring, -1)
             for _ in range(letter.power):

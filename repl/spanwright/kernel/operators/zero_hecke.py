@@ -1,7 +1,7 @@
 """The 0-Hecke algebra pi_w, and X^mu pi_w: it holds pi, and through X^±1 also d, s and T.
 
-pi_i f = (s_i f) pi_i + X_i (d_i f), pi_i pi_i = pi_i (Demazure 1974; Norton, 0-Hecke algebras,
-1979).
+pi_i f = (s_i f) pi_i + X_i (d_i f), pi_i pi_i = pi_i (Demazure, Désingularisation des
+variétés de Schubert généralisées, 1974; Norton, 0-Hecke algebras, 1979).
 """
 
 from __future__ import annotations

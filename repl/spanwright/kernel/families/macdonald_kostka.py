@@ -12,7 +12,7 @@ from functools import lru_cache
 from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
-from spanwright.kernel.families.base import Coefficients, Index, linear
+from spanwright.kernel.families.base import Coefficients, Index, linear, shown
 from spanwright.kernel.families.diagrams import Partition, row_excess
 from spanwright.kernel.families.macdonald import in_monomial_symmetric, integral_factor
 from spanwright.kernel.families.nonsymmetric_macdonald import one_minus, weight_scalar
@@ -21,7 +21,7 @@ from spanwright.kernel.families.transitions import transition
 from spanwright.kernel.indices import is_partition, trimmed
 
 
-def qt_kostka(shape: Partition, index: Partition) -> Scalar:
+def macdonald_kostka(shape: Partition, index: Partition) -> Scalar:
     """K_(shape, index)(q, t), a polynomial; 0 when the sizes differ."""
     shape, index = _checked(shape), _checked(index)
     if sum(shape) != sum(index):
@@ -29,21 +29,21 @@ def qt_kostka(shape: Partition, index: Partition) -> Scalar:
     return _column(index).get(shape, Scalar.zero(RING))
 
 
-def modified_qt_kostka(shape: Partition, index: Partition) -> Scalar:
+def modified_macdonald_kostka(shape: Partition, index: Partition) -> Scalar:
     """t^n(index) K_(shape, index)(q, 1/t), the coefficient of s_shape in the modified H_index."""
-    inverted = qt_kostka(shape, index).substitute({"t": weight_scalar((0, -1))})
+    inverted = macdonald_kostka(shape, index).substitute({"t": weight_scalar((0, -1))})
     return inverted * weight_scalar((0, row_excess(trimmed(index))))
 
 
 def kostka_foulkes(shape: Partition, index: Partition) -> Scalar:
     """K_(shape, index)(t) = K_(shape, index)(0, t) (VI.8)."""
-    return qt_kostka(shape, index).substitute({"q": Scalar.zero(RING)})
+    return macdonald_kostka(shape, index).substitute({"q": Scalar.zero(RING)})
 
 
 def _checked(index: Index) -> Partition:
     if not is_partition(index):
         raise OutsideDomain(
-            f"({','.join(map(str, index))}) is not a partition", code="not-a-partition")
+            f"{shown(index)} is not a partition", code="not-a-partition")
     return trimmed(index)
 
 
