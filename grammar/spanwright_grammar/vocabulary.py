@@ -36,6 +36,7 @@ SETTING_WORDS: dict[str, tuple[str, ...]] = {
     "hecke": ("plain", "balanced"),
     "show": ("short", "factored", "expanded"),
     "certainty": ("exact", "random"),
+    "counterexamples": ("all", "first"),
 }
 # The forms of `show … as` and `write … as`, and what each is for.
 FORMS: dict[str, str] = {
@@ -395,6 +396,11 @@ VOCABULARY: tuple[Entry, ...] = (
     Entry(
         "certainty", "setting", "fix certainty = word", "whether claims are decided exactly",
         "fix certainty = random", _OURS, inputs="exact, or random: at random points modulo a prime",
+    ),
+    Entry(
+        "counterexamples", "setting", "fix counterexamples = word",
+        "whether a `for` goes on behind the first counterexample",
+        "fix counterexamples = first", _OURS, inputs="all: it goes on; first: it stops there",
     ),
     Entry(
         "seed", "setting", "fix seed = k", "where the random points start",

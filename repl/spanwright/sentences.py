@@ -181,7 +181,8 @@ _SETTINGS: dict[str, Callable[[syntax.Fix, Context], Any]] = {
     "n": _whole(1, settings.LARGEST_N), "q": _parameter_value, "t": _parameter_value,
     "basis": _basis, "convention": _word, "hecke": _word, "show": _word,
     "seconds": _whole(1, 10**7, may_be_free=True), "terms": _whole(1, 10**9), "memory": _memory,
-    "jobs": _whole(1, 512), "certainty": _word, "seed": _whole(0, 10**18),
+    "jobs": _whole(1, 512), "certainty": _word, "counterexamples": _word,
+    "seed": _whole(0, 10**18),
 }
 
 

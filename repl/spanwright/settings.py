@@ -27,6 +27,7 @@ class Settings:
     memory: int | None = None
     jobs: int = 1
     certainty: str = "exact"
+    counterexamples: str = "all"
     seed: int = 1
 
     def changed(self, **changes: Any) -> Settings:

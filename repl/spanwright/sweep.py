@@ -297,7 +297,8 @@ def run_for(
     """`for … : …`: every case in a context of its own, and the tally of all."""
     steps = plan(node)
     run = _Run(steps, context, surface, carry_out, "text")
-    counting = _Counting(steps, stops_at_first=run.means.stops_at_first)
+    stops = run.means.stops_at_first or context.settings.counterexamples == "first"
+    counting = _Counting(steps, stops_at_first=stops)
     run.over_all(counting.consume, is_isolated=True)
     return counting.tally()
 

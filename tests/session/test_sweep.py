@@ -476,3 +476,10 @@ def test_values_keep_their_convention_in_tables_and_other_processes() -> None:
         assert value == type(value)(unpacked_value(packed_value(value.raw, 3), session.context))
     # the text alone says otherwise
     assert session.run("E_(0,0,1)").value != session.run("fix convention = reversed; E_001").value
+
+
+def test_a_setting_stops_at_the_first_counterexample() -> None:
+    sentence = "for i in 1..9: claim i < 3"
+    assert tally_of(sentence).n_failed == 7
+    tally = tally_of(f"fix counterexamples = first; {sentence}")
+    assert (tally.n_held, tally.n_failed) == (2, 1) and not tally.is_whole
