@@ -8,11 +8,14 @@ from spanwright.kernel.expansions import Expansion
 from spanwright.kernel.laurent import LaurentPolynomial
 from spanwright.rendering.scalars import TEXT
 from spanwright.rendering.text import term_pieces
-from spanwright.values import is_operator
+from spanwright.values import Definition, is_operator
 
 
 def term_lines(value: Any, show: str = "short") -> tuple[str, ...]:
     """The terms of a sum, each with its sign; nothing for other values."""
+    if isinstance(value, Definition):
+        terms = term_lines(value.value, show)
+        return (f"{value.name} = {terms[0]}", *terms[1:]) if terms else ()
     if isinstance(value, LaurentPolynomial | Expansion):
         pieces = term_pieces(value, TEXT, show)
     elif is_operator(value):

@@ -25,8 +25,8 @@ LONGEST_SENTENCE = 50
 MARK = "∋"
 PLAIN_MARK = ":"
 
-# Values that may be cut, because `show eq_… as text` shows the whole.
-_CUT_KINDS = frozenset({"expansion", "scalar", "list", "operator", "index"})
+# Values that may be cut, because `show eq_… as text` or `show f as text` shows the whole.
+_CUT_KINDS = frozenset({"expansion", "scalar", "list", "operator", "index", "definition"})
 _PROSE_KINDS = frozenset({"help", "remark"})
 _SHOWN_PARAMETERS = 4
 
@@ -145,7 +145,7 @@ def _with_caret(row: str, carets: str, columns: int) -> list[Line]:
 def _value_lines(reply: Reply, screen: Screen) -> list[Line]:
     tag_width = len(f"({reply.tag})") + 2 if reply.tag is not None else 0
     width = max(20, screen.columns - INDENT - tag_width)
-    is_cut = reply.tag is not None or reply.status == "failed"
+    is_cut = bool(_name_of(reply)) or reply.status == "failed"
     limit = max(LEAST_ROWS, screen.rows - ROWS_LEFT_FREE) if is_cut else None
     rows = list(islice(broken(reply.text, width), limit))
     texts = [row for row, _ in rows]
@@ -159,6 +159,14 @@ def _value_lines(reply: Reply, screen: Screen) -> list[Line]:
     return lines
 
 
+def _name_of(reply: Reply) -> str:
+    """How a result is called later: by its tag, or by the name that it was given."""
+    if reply.tag is not None:
+        return f"eq_{reply.tag}"
+    name, is_value, _ = reply.text.partition(" = ")
+    return name if reply.kind == "definition" and is_value and name.isidentifier() else ""
+
+
 def _coloured(rows: list[str]) -> list[Line]:
     from spanwright.shell.colouring import coloured_lines
 
@@ -167,7 +175,8 @@ def _coloured(rows: list[str]) -> list[Line]:
 
 def _hidden(reply: Reply, shown: int) -> str:
     """What has been cut off, and how to see it."""
-    all_of_it = f"; all of it: show eq_{reply.tag} as text" if reply.tag is not None else ""
+    name = _name_of(reply)
+    all_of_it = f"; all of it: show {name} as text" if name else ""
     if not reply.terms:
         return f"… {len(reply.text) - shown:,} more characters{all_of_it}"
     ends = list(accumulate((len(term) + 1 for term in reply.terms), initial=-1))[1:]
