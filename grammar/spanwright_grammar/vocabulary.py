@@ -252,6 +252,10 @@ VOCABULARY: tuple[Entry, ...] = (
         inputs="two partitions of one size, and the values of the parameters",
     ),
     Entry(
+        "double", "function", "double(f)", "f expanded in the double Schubert polynomials S_w(x;y)",
+        "double(x_1^2)", _NOTES, inputs="a polynomial or an expansion",
+    ),
+    Entry(
         "jack", "function", "jack(lambda)", "Jack polynomial with parameter alpha",
         "jack((2,1,0))", "H. Jack, A class of symmetric polynomials with a parameter, 1970",
         inputs="a partition",

@@ -129,6 +129,13 @@ def _scalar(e: Evaluation, node: syntax.Node) -> Scalar:
     return value
 
 
+def double(e: Evaluation, node: syntax.Call) -> Any:
+    """f expanded in the double Schubert polynomials S_w(x;y), which no bare symbol names."""
+    value = element_argument(e, node.arguments[0])
+    n = e.require_n(node)
+    return reduction.expand(e.algebra.aligned(value), e.algebra.family("double Schubert"), n)
+
+
 def jack(e: Evaluation, node: syntax.Call) -> Any:
     """The Jack polynomial with parameter alpha."""
     from spanwright.kernel.families.jack import jack as polynomial

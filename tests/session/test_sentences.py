@@ -324,3 +324,10 @@ def test_a_computed_subscript_of_s_is_a_position() -> None:
         "holds\n# 2 cases: 2 held", n=4)
     assert last("s_(2)", n=3).text == "s_(2)"
     assert last("let mu = (1,1); s_(mu + (1,0))", n=3).text == "s_(2,1)"
+
+
+def test_double_expands_in_both_alphabets() -> None:
+    # x_1^2 = S_312 + (y_1 + y_2) S_21 + y_1^2, as S_312 = (x_1 - y_1)(x_1 - y_2)
+    found = last("double(x_1^2)", n=2)
+    assert found.text == "S_(3,1,2)(x;y) + (y_1 + y_2) S_(2,1)(x;y) + y_1^2 S_(1)(x;y)"
+    assert last("claim double(S_1432) = S_1432", n=3).text == "holds"
