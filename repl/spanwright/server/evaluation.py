@@ -65,6 +65,8 @@ class Evaluator:
             while True:
                 line = await process.stdout.readline()
                 if not line:
+                    # the end of the pipe is seen before the end of the process
+                    self.close()
                     raise EvaluatorLost
                 answer = json.loads(line)
                 if answer["id"] == number:
@@ -95,8 +97,9 @@ class Evaluator:
 
 
 def _signal(process: asyncio.subprocess.Process, sign: signal.Signals) -> None:
-    with contextlib.suppress(ProcessLookupError, PermissionError):
-        os.kill(process.pid, sign)
+    if process.returncode is None:
+        with contextlib.suppress(ProcessLookupError, PermissionError):
+            os.kill(process.pid, sign)
 
 
 @dataclass(frozen=True, slots=True)
