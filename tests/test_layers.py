@@ -143,10 +143,14 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
         "spanwright.rendering",
         "spanwright.settings",
     ),
-    "spanwright.log_format": (*_LANGUAGE, "spanwright.rendering", "spanwright.replies"),
+    "spanwright.log_marks": (),
+    "spanwright.log_files": ("spanwright.log_marks",),
+    "spanwright.log_format": (
+        *_LANGUAGE, "spanwright.log_marks", "spanwright.rendering", "spanwright.replies"),
     "spanwright.journal": (
         *_LANGUAGE,
-        *(f"spanwright.{name}" for name in ("files", "headers", "log_format", "replies")),
+        *(f"spanwright.{name}" for name in (
+            "files", "headers", "log_files", "log_format", "log_marks", "replies")),
     ),
     "spanwright.replay": (
         *_LANGUAGE,
@@ -191,6 +195,7 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
             "files",
             "headers",
             "journal",
+            "log_files",
             "replay",
             "report",
             "session",
@@ -221,7 +226,7 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
     "spanwright.shell": (
         *_FRONT,
         *_PUBLIC_GRAMMAR,
-        *(f"spanwright.{name}" for name in ("files", "journal", "log_commands")),
+        *(f"spanwright.{name}" for name in ("files", "journal", "log_commands", "log_files")),
     ),
     "spanwright.workspace": (
         *_PUBLIC_GRAMMAR,
@@ -244,7 +249,8 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
         *(
             f"spanwright.{name}"
             for name in (
-                "editor_commands", "headers", "journal", "log_commands", "replay", "sweep",
+                "editor_commands", "headers", "journal", "log_commands", "log_files", "replay",
+                "sweep",
                 "report", "services", "shell", "server",
             )
         ),
@@ -260,7 +266,7 @@ THIRD_PARTY: dict[str, tuple[str, ...]] = {
     "flint": ("spanwright.kernel",),
     "lark": ("spanwright_grammar.parsing",),
     "lsprotocol": ("spanwright.server",),
-    "platformdirs": ("spanwright.cli", "spanwright.journal", "spanwright.shell"),
+    "platformdirs": ("spanwright.cli", "spanwright.log_files", "spanwright.shell"),
     "prompt_toolkit": ("spanwright.shell",),
     "pygls": ("spanwright.server",),
     "sympy": ("spanwright",),
@@ -282,6 +288,7 @@ OPENS_FILES_IN = (
     "spanwright.pool",
     "spanwright.tables",
     "spanwright.journal",
+    "spanwright.log_files",
     "spanwright.replay",
     "spanwright.report",
     "spanwright.shell.history",

@@ -290,7 +290,8 @@ def _run_sources(
 def _new_log(name: str) -> Journal | None:
     """A log for a run; None, and a word why, when it cannot be made."""
     from spanwright import log_commands
-    from spanwright.journal import Journal, LogFailure
+    from spanwright.journal import Journal
+    from spanwright.log_files import LogFailure
 
     try:
         return Journal.create(Path(name), log_commands.default_settings())

@@ -14,24 +14,16 @@ from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any, TypeVar
 
-import platformdirs
-
 from spanwright.files import MAX_BYTES
 from spanwright.headers import writer
-from spanwright.log_format import FORMAT, Composer, Log, read_log
+from spanwright.log_files import CLOEXEC, LogFailure, all_of, default_folder, lock, reason
+from spanwright.log_format import Composer, Log, read_log
+from spanwright.log_marks import FORMAT, SUFFIX
 from spanwright.replies import Reply
 from spanwright_grammar.parsing import Chunk, Comment, parse
 from spanwright_grammar.source import Source, Span
 
-SUFFIX = ".span"
-OFFERED_FOR = 14 * 24 * 3600
-"""Seconds for which a session that ended without leave is offered again."""
-
 Item = TypeVar("Item")
-
-
-class LogFailure(Exception):
-    """A log that cannot be read, locked or written; the message is for the user."""
 
 
 class Journal:
@@ -64,9 +56,9 @@ class Journal:
         try:
             with contextlib.suppress(FileNotFoundError):
                 os.unlink(draft)
-            handle = os.open(draft, os.O_RDWR | os.O_CREAT | os.O_EXCL | _CLOEXEC, 0o666)
+            handle = os.open(draft, os.O_RDWR | os.O_CREAT | os.O_EXCL | CLOEXEC, 0o666)
             try:
-                _lock(handle, path)
+                lock(handle, path)
                 _write_all(handle, header)
                 _name(draft, path)
                 _sync_folder(path.parent)
@@ -81,7 +73,7 @@ class Journal:
                 f"{path} exists already: take another name, or go on in it with "
                 f"`spanwright resume {path}`") from error
         except OSError as error:
-            raise LogFailure(f"{path} cannot be written: {_reason(error)}") from error
+            raise LogFailure(f"{path} cannot be written: {reason(error)}") from error
         return Journal(path, handle, len(header), composer)
 
     @staticmethod
@@ -92,12 +84,12 @@ class Journal:
         cannot be written.
         """
         try:
-            handle = os.open(path, os.O_RDWR | _CLOEXEC)
+            handle = os.open(path, os.O_RDWR | CLOEXEC)
         except OSError as error:
-            raise LogFailure(f"{path} cannot be opened: {_reason(error)}") from error
+            raise LogFailure(f"{path} cannot be opened: {reason(error)}") from error
         try:
-            _lock(handle, path)
-            content = _all_of(handle)
+            lock(handle, path)
+            content = all_of(handle)
             log = _read(content, path)
             if log.format is None:
                 raise LogFailure(
@@ -118,7 +110,7 @@ class Journal:
             os.fsync(handle)
         except OSError as error:
             os.close(handle)
-            raise LogFailure(f"{path} cannot be written: {_reason(error)}") from error
+            raise LogFailure(f"{path} cannot be written: {reason(error)}") from error
         except LogFailure:
             os.close(handle)
             raise
@@ -190,7 +182,7 @@ class Journal:
             if os.fstat(self._handle).st_nlink == 0:
                 raise FileNotFoundError(2, "the file has been removed")
         except OSError as error:
-            self.trouble = f"{self.path}: this is not in the log: {_reason(error)}"
+            self.trouble = f"{self.path}: this is not in the log: {reason(error)}"
             if isinstance(error, FileNotFoundError):
                 # written, to a file without a name: it is lost when this process ends
                 self._size += len(data)
@@ -239,13 +231,8 @@ def read(path: Path) -> Log:
             raise LogFailure(f"{path} is larger than {MAX_BYTES // 10**6} MB")
         content = path.read_bytes()
     except OSError as error:
-        raise LogFailure(f"{path} cannot be read: {_reason(error)}") from error
+        raise LogFailure(f"{path} cannot be read: {reason(error)}") from error
     return _read(content, path)
-
-
-def default_folder() -> Path:
-    """Where the shell keeps its logs."""
-    return platformdirs.user_state_path("spanwright") / "logs"
 
 
 def create_default(settings: Iterable[str] = (), folder: Path | None = None) -> Journal:
@@ -254,7 +241,7 @@ def create_default(settings: Iterable[str] = (), folder: Path | None = None) -> 
     try:
         place.mkdir(parents=True, exist_ok=True)
     except OSError as error:
-        raise LogFailure(f"{place} cannot be made: {_reason(error)}") from error
+        raise LogFailure(f"{place} cannot be made: {reason(error)}") from error
     stem = time.strftime("%Y-%m-%d-%H%M%S")
     for k in range(1, 1000):
         path = place / f"{stem}{'' if k == 1 else f'-{k}'}{SUFFIX}"
@@ -264,51 +251,13 @@ def create_default(settings: Iterable[str] = (), folder: Path | None = None) -> 
     raise LogFailure(f"{place} holds too many logs of this second")
 
 
-def interrupted(folder: Path | None = None, *, is_last: bool = False) -> Path | None:
-    """The latest log in a folder whose session was lost, not left; None when there is none.
-
-    Sessions that still run do not count. With `is_last` no session may have been left since.
-    """
-    place = folder or default_folder()
-    try:
-        dated = [(path.stat().st_mtime_ns, path.name, path) for path in place.glob(f"*{SUFFIX}")]
-    except OSError:
-        return None
-    for changed, _, path in sorted(dated, reverse=True):
-        if time.time() - changed / 10**9 > OFFERED_FOR:
-            return None
-        log = _unlocked(path)
-        if log is None or log.format is None:
-            continue
-        if log.records and not log.is_closed:
-            return path
-        if log.is_closed and is_last:
-            return None
-    return None
-
-
-def _unlocked(path: Path) -> Log | None:
-    """The log in a file that nobody is writing; None when it is being written, or unreadable."""
-    try:
-        handle = os.open(path, os.O_RDWR | _CLOEXEC)
-    except OSError:
-        return None
-    try:
-        _lock(handle, path)
-        return _read(_all_of(handle), path)
-    except (LogFailure, OSError):
-        return None
-    finally:
-        os.close(handle)
-
-
 def rewrite(path: Path, content: str) -> None:
     """Put a new text in the place of a log: whole, or not at all; raises LogFailure."""
     draft = path.with_name(f".{path.name}.{os.getpid()}.part")
     try:
-        handle = os.open(path, os.O_RDWR | _CLOEXEC)
+        handle = os.open(path, os.O_RDWR | CLOEXEC)
         try:
-            _lock(handle, path)
+            lock(handle, path)
             with open(draft, "x", encoding="utf-8", newline="\n") as stream:
                 stream.write(content)
                 stream.flush()
@@ -321,7 +270,7 @@ def rewrite(path: Path, content: str) -> None:
     except OSError as error:
         with contextlib.suppress(OSError):
             os.unlink(draft)
-        raise LogFailure(f"{path} cannot be written: {_reason(error)}") from error
+        raise LogFailure(f"{path} cannot be written: {reason(error)}") from error
 
 
 def _read(content: bytes, path: Path) -> Log:
@@ -332,14 +281,6 @@ def _read(content: bytes, path: Path) -> Log:
             f"{path} is a log of format {log.format}; this program reads formats up to {FORMAT}, "
             "a newer one is needed")
     return log
-
-
-def _all_of(handle: int) -> bytes:
-    os.lseek(handle, 0, os.SEEK_SET)
-    pieces = []
-    while piece := os.read(handle, 1 << 20):
-        pieces.append(piece)
-    return b"".join(pieces)
 
 
 def _set_aside(path: Path, log: Log, content: bytes) -> Path | None:
@@ -366,8 +307,6 @@ def _since_last_seal(text: str) -> str:
 
 
 # --- The system ----------------------------------------------------------------------------------
-
-_CLOEXEC = getattr(os, "O_CLOEXEC", 0)
 
 
 @contextlib.contextmanager
@@ -405,20 +344,6 @@ def _name(draft: Path, path: Path) -> None:
         os.rename(draft, path)
 
 
-def _lock(handle: int, path: Path) -> None:
-    """Hold a file against other writers until it is closed; raises LogFailure when one has it."""
-    try:
-        import fcntl
-    except ImportError:
-        # no such locks on this system: two shells still never meet, since `create` never opens
-        # a file that exists
-        return
-    try:
-        fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-    except BlockingIOError as error:
-        raise LogFailure(f"{path} is being written by another session") from error
-
-
 def _sync_folder(folder: Path) -> None:
     """Make a new name in a folder last, where the system can."""
     with contextlib.suppress(OSError):
@@ -427,7 +352,3 @@ def _sync_folder(folder: Path) -> None:
             os.fsync(handle)
         finally:
             os.close(handle)
-
-
-def _reason(error: OSError) -> str:
-    return (error.strerror or str(error)).lower()

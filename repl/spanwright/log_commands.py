@@ -141,7 +141,7 @@ def replay(
 def _replayed(
     path: Path, settings: Options, opening: Callable[[Folder, Bounds], Conversation]
 ) -> tuple[Path, Replayed | str]:
-    from spanwright.journal import LogFailure
+    from spanwright.log_files import LogFailure
     from spanwright.replay import replay_file
 
     try:
@@ -178,7 +178,8 @@ def _rewritten(
     path: Path, replayed: Replayed, options: argparse.Namespace, write: Write, ask: Ask
 ) -> str:
     """Renew a log after a confirmation; what went wrong, or nothing."""
-    from spanwright.journal import LogFailure, rewrite
+    from spanwright.journal import rewrite
+    from spanwright.log_files import LogFailure
 
     n_new = len(replayed.checks) - len(replayed.of("agrees"))
     question = (f"write {path} anew, with {_count(n_new, 'result')} other than recorded"
@@ -247,7 +248,8 @@ def printable(text: str) -> str:
 def report(options: argparse.Namespace, write: Write, complain: Write) -> int:
     """Set a log as a document; 2 when it cannot be read or written."""
     from spanwright.files import FileRefused, Folder
-    from spanwright.journal import LogFailure, read
+    from spanwright.journal import read
+    from spanwright.log_files import LogFailure
     from spanwright.report import FORMS, written
 
     place: Path = options.place
@@ -282,7 +284,7 @@ def _is_same(one: Path, other: Path) -> bool:
 
 def to_resume(options: argparse.Namespace, complain: Write) -> Path | None:
     """The log that `resume` means; None, with a word why, when there is none."""
-    from spanwright.journal import interrupted
+    from spanwright.log_files import interrupted
 
     found: Path | None = options.log or interrupted()
     if found is None:
@@ -308,11 +310,3 @@ def bring_back(path: Path, conversation: Conversation, write: Write) -> Journal:
             f"{f': {check.note}' if check.note else ''}"))
     write(f"{_count(resumed.n_said, 'sentence')} of {path} brought back")
     return resumed.journal
-
-
-def offer() -> str:
-    """What the shell's first line says when the last session was lost, else nothing."""
-    from spanwright.journal import interrupted
-
-    found = interrupted(is_last=True)
-    return "" if found is None else f"the last session was lost: spanwright resume {found}"

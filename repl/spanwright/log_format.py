@@ -21,13 +21,11 @@ import zlib
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
+from spanwright.log_marks import CLOSED, FIRST, FORMAT, HEADER, SEAL
 from spanwright.replies import Reply
 from spanwright_grammar import syntax
 from spanwright_grammar.parsing import Comment, parse
 from spanwright_grammar.source import Source
-
-FORMAT = 1
-"""Raised when a log of the earlier kind could be misread; every kind stays readable."""
 
 WIDTH = 96
 """Columns of a result, so that a log reads well beside an editor's margin."""
@@ -38,16 +36,12 @@ SHOWN_CHARACTERS = 6_000
 
 SHOWN_MESSAGE = 2_000
 
-_FIRST = re.compile(r"# Spanwright log, format ([0-9]{1,6})$")
 _SETTINGS = re.compile(r"# settings: (.*)$")
 _WRITER = re.compile(r"# written by (.*)$")
-_SEAL = re.compile(r"#= # ([^#\n]*?),? ?check ([0-9a-f]{8})$")
 _TAG = re.compile(r"\((\d{1,12})\)$")
 _DIGEST = re.compile(r"digest ([0-9a-f]{4,64})$")
 _CUT = re.compile(r"([\d,]+) of ([\d,]+) (terms|lines)$")
 
-CLOSED = "closed"
-HEADER = "header"
 REFUSED = "not carried out"
 LEFT = "left"
 
@@ -252,7 +246,7 @@ def _marked(line: str) -> str:
     """A line of a result; one that looks like a seal is moved to the right."""
     line = line.replace("\r", " ").rstrip()
     marked = f"#= {line}".rstrip()
-    return f"#=  {line}" if _SEAL.match(marked) else marked
+    return f"#=  {line}" if SEAL.match(marked) else marked
 
 
 # --- Reading -------------------------------------------------------------------------------------
@@ -281,7 +275,7 @@ def read_log(text: str, name: str = "<log>") -> Log:
     """A log, or a script with recorded results, as records; never raises on any text."""
     text = text.replace("\r\n", "\n").replace("\r", "\n")
     lines = text.split("\n")
-    first = _FIRST.match(lines[0])
+    first = FIRST.match(lines[0])
     found_format = int(first.group(1)) if first else None
     whole, altered = _checked(lines) if first else (text, [])
     source = Source(whole, name)
@@ -308,7 +302,7 @@ def _checked(lines: list[str]) -> tuple[str, list[Altered]]:
     altered: list[Altered] = []
     start = end = 0
     for place, line in enumerate(lines):
-        seal = _SEAL.match(line)
+        seal = SEAL.match(line)
         if seal is None:
             continue
         is_last = place == len(lines) - 1  # no line end behind it
@@ -405,7 +399,7 @@ def _records(
 
 
 def _seal_of(line: str) -> Seal | None:
-    found = _SEAL.match(line)
+    found = SEAL.match(line)
     if found is None:
         return None
     tag: int | None = None

@@ -16,9 +16,11 @@ from hypothesis import strategies as st
 
 from effort import effort
 from recorded import DEMO, Talk, again, log_text, reply_of, write_log
-from spanwright import journal
-from spanwright.journal import Journal, LogFailure
+from spanwright import journal, log_files
+from spanwright.journal import Journal
+from spanwright.log_files import LogFailure
 from spanwright.log_format import SHOWN_CHARACTERS, read_log
+from spanwright.log_marks import Ending, ending
 from spanwright.replay import resume
 from spanwright.session import Session
 from spanwright_grammar.source import Source
@@ -318,19 +320,46 @@ def test_resume_sets_a_torn_record_aside(tmp_path: Path) -> None:
 
 
 def test_lost_session_is_offered_once_it_is_lost(tmp_path: Path) -> None:
-    assert journal.interrupted(tmp_path) is None
+    assert log_files.interrupted(tmp_path) is None
     kept = journal.create_default(folder=tmp_path)
     session = Session(n=2)
     say(kept, session, "x_1")
-    assert journal.interrupted(tmp_path) is None, "still running"
+    assert log_files.interrupted(tmp_path) is None, "still running"
     kept.let_go()
-    assert journal.interrupted(tmp_path) == kept.path
+    assert log_files.interrupted(tmp_path) == kept.path
     resumed = resume(kept.path, Talk(Session()))
     resumed.journal.close()
-    assert journal.interrupted(tmp_path) is None
+    assert log_files.interrupted(tmp_path) is None
     unused = journal.create_default(folder=tmp_path)
     unused.close(keeps_empty=False)
     assert not unused.path.exists()
+
+
+def test_the_ending_seen_by_lines_alone_is_that_of_the_whole_log(tmp_path: Path) -> None:
+    kept = Journal.create(tmp_path / "a.span", ["fix n = 2"])
+    say(kept, Session(n=2), "x_1; zork; x_2 # why\n# a remark\nlet f = x_1")
+    kept.close()
+    resumed = resume(kept.path, Talk(Session()))
+    say(resumed.journal, Session(n=2), "x_1 + x_2")
+    resumed.journal.close()
+    text = kept.path.read_text()
+    seen = set()
+    for size in range(len(text) + 1):
+        log = read_log(text[:size])
+        if log.format is None:
+            expected = Ending.NO_LOG
+        elif not log.records:
+            expected = Ending.UNUSED
+        else:
+            expected = Ending.LEFT if log.is_closed else Ending.LOST
+        # the end of a seal is its last digit; the line end behind it may be missing
+        found = ending(text[:size].encode())
+        assert found is expected, text[:size][-60:]
+        seen.add(found)
+    assert seen == set(Ending)
+    assert ending(text.replace("\n", "\r\n").encode()) is Ending.LEFT
+    long = text.replace("x_1 + x_2\n", f"x_1 + x_2   # {'long ' * 40_000}\n")
+    assert ending(long[: long.rindex("long")].encode()) is Ending.LEFT
 
 
 def test_a_lost_session_is_found_behind_newer_logs(tmp_path: Path) -> None:
@@ -340,14 +369,14 @@ def test_a_lost_session_is_found_behind_newer_logs(tmp_path: Path) -> None:
         say(kept, Session(n=2), "x_1")
         os.utime(kept.path, (time.time() + k - 20,) * 2)
     lost.let_go()
-    assert journal.interrupted(tmp_path, is_last=True) == lost.path
+    assert log_files.interrupted(tmp_path, is_last=True) == lost.path
     say(left, Session(n=2), "x_1")
     left.close()
     # a session that was left since is no reason to ask again, nor to give the lost one up
-    assert journal.interrupted(tmp_path, is_last=True) is None
-    assert journal.interrupted(tmp_path) == lost.path
-    os.utime(lost.path, (time.time() - journal.OFFERED_FOR - 60,) * 2)
-    assert journal.interrupted(tmp_path) is None
+    assert log_files.interrupted(tmp_path, is_last=True) is None
+    assert log_files.interrupted(tmp_path) == lost.path
+    os.utime(lost.path, (time.time() - log_files.OFFERED_FOR - 60,) * 2)
+    assert log_files.interrupted(tmp_path) is None
     running.close()
 
 

@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 from recorded import DEMO, Talk, again, log_text, opening, write_log
-from spanwright import journal, log_commands
+from spanwright import journal, log_commands, log_files
 from spanwright.files import FileRefused, Folder
 from spanwright.log_format import read_log
 from spanwright.replay import (
@@ -435,8 +435,9 @@ def test_side_by_side_of_long_and_empty_results() -> None:
 
 
 def test_printed_offer_and_resume(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(journal, "default_folder", lambda: tmp_path)
-    assert log_commands.offer() == ""
+    for module in (journal, log_files):
+        monkeypatch.setattr(module, "default_folder", lambda: tmp_path)
+    assert log_files.offer() == ""
     said: list[str] = []
     assert log_commands.to_resume(options("resume"), said.append) is None
     assert "no session was lost" in said[0]
@@ -444,7 +445,7 @@ def test_printed_offer_and_resume(tmp_path: Path, monkeypatch: pytest.MonkeyPatc
     for _ in kept.recorded("x_1", list(Talk(Session(n=2)).say("x_1"))):
         continue
     kept.let_go()
-    assert log_commands.offer().endswith(f"spanwright resume {kept.path}")
+    assert log_files.offer().endswith(f"spanwright resume {kept.path}")
     path = log_commands.to_resume(options("resume"), said.append)
     assert path == kept.path
     session = Session(n=2)

@@ -354,6 +354,68 @@ def test_the_start_is_light() -> None:
     assert not loaded & {"sympy", "pygls", "lsprotocol", "flint", "distributed", "pygments"}
 
 
+def test_the_first_prompt_waits_for_no_language(tmp_path: Path) -> None:
+    loaded = modules_after(
+        "import os, sys\n"
+        f"os.environ['XDG_STATE_HOME'] = {str(tmp_path)!r}\n"
+        "from spanwright import journal\n"
+        "lost = journal.create_default()\n"
+        "lost.close()\n"
+        "for name in [n for n in sys.modules if n.startswith(('lark', 'spanwright'))]:\n"
+        "    del sys.modules[name]\n"
+        "from spanwright.replies import State\n"
+        "from spanwright.shell import loop\n"
+        "class Quiet:\n"
+        "    def state(self): return State()\n"
+        "asked = []\n"
+        "def ask(state):\n"
+        "    asked.append(state)\n"
+        "    raise EOFError\n"
+        "assert loop._logged(Quiet(), ask, lambda lines: None, None) == 0 and asked")
+    assert not loaded & {"lark", "spanwright_grammar", "flint", "sympy"}
+
+
+def test_the_log_is_made_at_the_first_entry(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("XDG_STATE_HOME", str(tmp_path))
+    entries = ["fix n = 2", "x_1"]
+    counts: list[int] = []
+
+    def ask(state: State) -> str:
+        counts.append(len(list(tmp_path.rglob("*.span"))))
+        if not entries:
+            raise EOFError
+        return entries.pop(0)
+
+    written: list[Line] = []
+    assert loop._logged(LocalConversation(Session()), ask, written.extend, None) == 0
+    assert counts == [0, 1, 1]
+    (log,) = tmp_path.rglob("*.span")
+    assert "\nx_1\n#= x_1\n#= # (1), expansion" in log.read_text()
+    assert log.read_text().rstrip().rpartition("\n")[2].startswith("#= # closed, check ")
+
+
+def test_a_log_that_cannot_be_made_is_spoken_of_once(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    in_the_way = tmp_path / "file"
+    in_the_way.write_text("")
+    monkeypatch.setenv("XDG_STATE_HOME", str(in_the_way))
+    entries = ["fix n = 2", "x_1"]
+
+    def ask(state: State) -> str:
+        if not entries:
+            raise EOFError
+        return entries.pop(0)
+
+    written: list[Line] = []
+    assert loop._logged(LocalConversation(Session()), ask, written.extend, None) == 0
+    lines = plain(written)
+    (at,) = [k for k, line in enumerate(lines) if line.startswith("no log is kept: ")]
+    assert lines[at + 1] == "  n = 2" and lines[at + 2].endswith("(1)")
+
+
 def test_the_loop_alone_loads_no_editor() -> None:
     assert "prompt_toolkit" not in modules_after("from spanwright.shell import loop")
 

@@ -11,7 +11,7 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from spanwright import __version__
+from spanwright import __version__, log_files
 from spanwright.conversation import Conversation, local
 from spanwright.files import Folder
 from spanwright.replies import Progress, Reply, State
@@ -59,33 +59,60 @@ def _logged(
     conversation: Conversation, ask: Ask, write: Write, resumed: Path | None
 ) -> int:
     """Converse with a log, new or gone on in; without one when none can be written."""
-    from spanwright import log_commands
-    from spanwright.journal import LogFailure, create_default
 
     def tell(line: str) -> None:
         write([[("class:aside", line)]])
 
     write([greeting(__version__)])
-    journal: Journal | None = None
+    log = SessionLog(tell)
+    if resumed is None:
+        offered = log_files.offer()
+        if offered:
+            tell(offered)
+    elif not log.go_on_in(resumed, conversation):
+        return NOT_BROUGHT_BACK
     try:
-        if resumed is None:
-            lost = log_commands.offer()
-            if lost:
-                tell(lost)
-            journal = create_default(log_commands.default_settings())
-        else:
-            journal = log_commands.bring_back(resumed, conversation, tell)
-    except LogFailure as error:
-        if resumed is not None:
-            # what was asked for is not there: an empty session would only look like it
-            tell(f"not brought back: {error}")
-            return NOT_BROUGHT_BACK
-        tell(f"no log is kept: {error}")
-    try:
-        return converse(conversation, ask, write, journal)
+        return converse(conversation, ask, write, log)
     finally:
-        if journal is not None:
-            journal.close(keeps_empty=False)
+        log.close()
+
+
+class SessionLog:
+    """The log of this session, made at the first entry: the first prompt need not wait for it."""
+
+    def __init__(self, tell: Callable[[str], None]) -> None:
+        self._tell = tell
+        self._journal: Journal | None = None
+        self._is_open = False
+
+    def go_on_in(self, path: Path, conversation: Conversation) -> bool:
+        """Bring the session of a log back; False, with the reason told, when that fails."""
+        from spanwright import log_commands
+
+        self._is_open = True
+        try:
+            self._journal = log_commands.bring_back(path, conversation, self._tell)
+        except log_files.LogFailure as error:
+            # what was asked for is not there: an empty session would only look like it
+            self._tell(f"not brought back: {error}")
+        return self._journal is not None
+
+    def journal(self) -> Journal | None:
+        """What takes the records; None, the reason told once, when no log can be written."""
+        if not self._is_open:
+            from spanwright import journal, log_commands
+
+            self._is_open = True
+            try:
+                self._journal = journal.create_default(log_commands.default_settings())
+            except log_files.LogFailure as error:
+                self._tell(f"no log is kept: {error}")
+        return self._journal
+
+    def close(self) -> None:
+        """Mark the session as left; a log without entries goes away."""
+        if self._journal is not None:
+            self._journal.close(keeps_empty=False)
 
 
 def make_prompt() -> Prompt:
@@ -97,7 +124,7 @@ def make_prompt() -> Prompt:
 
 
 def converse(
-    conversation: Conversation, ask: Ask, write: Write, journal: Journal | None = None
+    conversation: Conversation, ask: Ask, write: Write, log: SessionLog | None = None
 ) -> int:
     """Ask and answer until the user leaves."""
     # does not wait: the evaluator may still be loading
@@ -107,6 +134,7 @@ def converse(
             text = ask(state)
             if not text.strip():
                 continue
+            journal = None if log is None else log.journal()
             if show_replies(conversation, text, write, journal):
                 return 0
             state = conversation.state()
