@@ -45,6 +45,16 @@ def test_three_routes_to_P_agree(n: int) -> None:
             assert polynomial.coefficient(padded(index, n)) == 1
 
 
+@pytest.mark.parametrize(
+    ("index", "n"),
+    [(index, 4) for index in partitions(8, 4)]
+    + [((2, 1, 1), 5), ((3, 2, 2), 5), ((2, 2, 1, 1), 6), ((1, 1, 1), 6)])
+def test_symmetrisation_agrees_with_tableaux_for_blocks_anywhere(
+    index: tuple[int, ...], n: int
+) -> None:
+    assert macdonald.by_symmetrisation(index, n) == P.to_monomials(index, n)
+
+
 def test_T_fixes_symmetric_polynomials_up_to_t() -> None:
     f = P.to_monomials((2, 1), 3)
     for i in (1, 2):

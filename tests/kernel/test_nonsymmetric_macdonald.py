@@ -81,6 +81,14 @@ def test_the_recursion_does_not_depend_on_what_is_remembered(mu: tuple[int, ...]
 
 @settings(max_examples=effort(30))
 @given(INDICES)
+def test_no_factor_is_left_in_common(mu: tuple[int, ...]) -> None:
+    """The recursion tries few factors for cancelling; trying all finds no more."""
+    f = E.to_monomials(mu)
+    again = LaurentPolynomial.reduced(f.n, f.ring, f.terms, f.scale)
+    assert again.terms == f.terms and again.scale == f.scale
+
+
+@given(INDICES)
 def test_recursion_path(mu: tuple[int, ...]) -> None:
     """Steps lead down to 0; tau_i exchanges a descent, tau_pi turns and raises."""
     mu = tuple(part - min(mu) for part in mu)

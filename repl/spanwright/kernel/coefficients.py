@@ -390,20 +390,15 @@ def _cancel(
     rest: fmpz_mpoly, factors: dict[Factor, int], own: dict[Factor, int]
 ) -> fmpz_mpoly:
     """Divide `rest` by factors of the denominator that are not its own; `factors` is changed."""
-    # most divisions leave a remainder, and most of those show it at one integer point
     value = probe(rest)
     for factor, exponent in list(factors.items()):
-        if exponent < 0 and own.get(factor, 0) >= 0:
-            if value and factor.probe and value % factor.probe:
-                continue
-            rest, n_times = divide_out(rest, factor.polynomial, -exponent)
-            if n_times:
-                value = value // factor.probe**n_times if factor.probe else fmpz(0)
-                exponent += n_times
-                if exponent:
-                    factors[factor] = exponent
-                else:
-                    del factors[factor]
+        if exponent >= 0 or own.get(factor, 0) < 0:
+            continue
+        rest, n_times, value = divide_out(rest, factor, -exponent, value)
+        if n_times == -exponent:
+            del factors[factor]
+        elif n_times:
+            factors[factor] = exponent + n_times
     return rest
 
 
@@ -451,10 +446,11 @@ def total(scalars: Iterable[Scalar], ring: ParameterRing | None = None) -> Scala
         return Scalar.zero(common_ring)
     content, monomial, rest = common_ring.split(accumulated)
     factors: dict[Factor, int] = {}
+    value = probe(rest)
     for factor, exponent in common.items():
         # a factor whose full power stands in one term alone cannot cancel
         if exponent < 0 and holders[factor] > 1 and not rest.is_one():
-            rest, n_times = divide_out(rest, factor.polynomial, -exponent)
+            rest, n_times, value = divide_out(rest, factor, -exponent, value)
             exponent += n_times
         if exponent:
             factors[factor] = exponent

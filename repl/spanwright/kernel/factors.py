@@ -204,17 +204,23 @@ def probe(polynomial: fmpz_mpoly) -> fmpz:
 
 
 def divide_out(
-    polynomial: fmpz_mpoly, divisor: fmpz_mpoly, at_most: int
-) -> tuple[fmpz_mpoly, int]:
-    """Divide as often as it goes without remainder, at most so many times."""
+    polynomial: fmpz_mpoly, factor: Factor, at_most: int, value: fmpz
+) -> tuple[fmpz_mpoly, int, fmpz]:
+    """Divide as often as it goes without remainder: the quotient, how often, its probe.
+
+    Most divisions leave a remainder, and most of those show it in `value`, the polynomial's probe.
+    """
     n_times = 0
     while n_times < at_most:
+        if value and factor.probe and value % factor.probe:
+            break
         try:
-            polynomial = polynomial / divisor
+            polynomial = polynomial / factor.polynomial
         except DomainError:
             break
+        value = value // factor.probe if factor.probe else fmpz(0)
         n_times += 1
-    return polynomial, n_times
+    return polynomial, n_times, value
 
 
 def binomial_factors(ring: ParameterRing, polynomial: fmpz_mpoly) -> dict[Factor, int] | None:
@@ -226,10 +232,15 @@ def binomial_factors(ring: ParameterRing, polynomial: fmpz_mpoly) -> dict[Factor
     active = [k for k, d in enumerate(polynomial.degrees()) if d]
     if not active or len(active) > 2:
         return None
-    coefficients = polynomial.coeffs()
     # products of Phi_d read the same backwards, up to sign, and start and end with 1 or -1
-    if abs(coefficients[0]) != 1 or abs(coefficients[-1]) != 1:
+    last = len(polynomial) - 1
+    for place in (0, 1, 2):
+        if place < last and abs(polynomial.coefficient(place)) != abs(
+                polynomial.coefficient(last - place)):
+            return None
+    if abs(polynomial.coefficient(0)) != 1:
         return None
+    coefficients = polynomial.coeffs()
     backwards = coefficients[::-1]
     if coefficients != backwards and coefficients != [-c for c in backwards]:
         return None

@@ -7,7 +7,7 @@ denominator divides them all, and the term with the largest exponent has a posit
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Collection, Container, Iterable, Iterator, Mapping, Sequence
 from math import comb, log2, prod
 from typing import Any
 
@@ -48,8 +48,15 @@ class LaurentPolynomial:
     # construction
 
     @staticmethod
-    def reduced(n: int, ring: ParameterRing, terms: Terms, scale: Scalar) -> LaurentPolynomial:
-        """The canonical polynomial scale * sum terms; the scale may be any scalar of `ring`."""
+    def reduced(
+        n: int, ring: ParameterRing, terms: Terms, scale: Scalar,
+        suspects: Container[Factor] | None = None,
+    ) -> LaurentPolynomial:
+        """The canonical polynomial scale * sum terms; the scale may be any scalar of `ring`.
+
+        `suspects` are the factors of the denominator that may divide all terms, when that is
+        known: no others are tried.
+        """
         if not terms or scale.is_zero:
             return LaurentPolynomial(n, ring, {}, Scalar.one(ring))
         scale = scale.lift(ring)  # a product may have settled where t^(1/2) does not occur
@@ -57,14 +64,17 @@ class LaurentPolynomial:
         if not top.is_one():
             terms = {e: c * top for e, c in terms.items()}
         factors = {f: e for f, e in scale.factors.items() if e < 0}
-        terms = _divided_by_common(terms, factors)
+        terms = _divided_by_common(terms, factors, suspects)
         content = fmpz(0)
         low: Exponents | None = None
         for c in terms.values():
-            content = content.gcd(c.content())  # type: ignore[attr-defined]
+            if content != 1:
+                content = content.gcd(c.content())  # type: ignore[attr-defined]
             if low is None or any(low):
                 own = tuple(map(int, c.term_content().monomial(0)))
                 low = own if low is None else tuple(map(min, low, own))
+            elif content == 1:
+                break
         assert low is not None
         lead = terms[max(terms)]
         if lead.coefficient(len(lead) - 1) < 0:
@@ -368,9 +378,13 @@ class LaurentPolynomial:
         return value * point.value(self.scale) % point.prime
 
 
-def _divided_by_common(terms: Terms, factors: dict[Factor, int]) -> Terms:
+def _divided_by_common(
+    terms: Terms, factors: dict[Factor, int], suspects: Container[Factor] | None
+) -> Terms:
     """Cancel factors of the denominator that divide every term; `factors` is changed."""
     for factor in list(factors):
+        if suspects is not None and factor not in suspects:
+            continue
         while factor in factors:
             divided: Terms = {}
             try:

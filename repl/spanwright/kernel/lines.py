@@ -3,15 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from flint import fmpz_mpoly
 
 from spanwright.kernel.laurent import Terms
 
 
-@dataclass(frozen=True, slots=True)
-class Line:
+class Line(NamedTuple):
     """The terms that differ in x_i^k x_(i+1)^(size-k) alone."""
 
     before: tuple[int, ...]
@@ -51,3 +50,30 @@ def divided_differences(line: Line) -> dict[int, fmpz_mpoly]:
             result[k] = running
             result[size - 1 - k] = running
     return result
+
+
+def hecke_images(line: Line, t: fmpz_mpoly) -> dict[int, fmpz_mpoly]:
+    """T_i f = t s_i f + (1 - t) x_(i+1) d_i f on a line: coefficients of x_i^k x_(i+1)^(size-k).
+
+    Zeros may occur. As t (s_i f - g) + g, g = x_(i+1) d_i f: multiplied by nothing but t.
+    """
+    divided, size = divided_differences(line), line.size
+    result = dict(divided)
+    for k, c in line.coefficients.items():
+        g = divided.get(size - k)
+        result[size - k] = c * t if g is None else (c - g) * t + g
+    mirrors = {size - k for k in line.coefficients}
+    for k, g in divided.items():
+        if k not in mirrors:
+            result[k] = g - g * t
+    return result
+
+
+def hecke_image(terms: Terms, i: int, t: fmpz_mpoly) -> Terms:
+    """T_i f, i from 1, with no denominators: T_i has its inverse over Z[t, 1/t]."""
+    found: Terms = {}
+    for line in lines(terms, i):
+        for k, c in hecke_images(line, t).items():
+            if c:
+                found[line.exponents(k)] = c
+    return found

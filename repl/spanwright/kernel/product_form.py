@@ -26,6 +26,7 @@ if TYPE_CHECKING:
 # binomials. Both bounds keep factoring for display below a millisecond.
 SHORT_TERMS = 16
 SHORT_DEGREE = 40
+REMEMBERED_NUMERATORS = 5_000
 
 Powers = tuple[tuple[str, int | Fraction], ...]
 """Parameters with their exponents; those of t may be halves where t^(1/2) occurs."""
@@ -149,13 +150,30 @@ def _numerator_for(
     expanded = value.expanded_rest()
     if show == "expanded":
         return 1, None, expanded
-    if show == "factored" or (
-        len(expanded) <= SHORT_TERMS and expanded.total_degree() <= SHORT_DEGREE
-    ):
+    if len(expanded) <= SHORT_TERMS and expanded.total_degree() <= SHORT_DEGREE:
+        return (*_factored_once(ring, expanded), None)
+    if show == "factored":
         unit, _, factors = factorise(ring, expanded)
         return int(unit), factors, None
     found = binomial_factors(ring, expanded)
     return (1, found, None) if found is not None else (1, None, expanded)
+
+
+_short_numerators: dict[tuple[ParameterRing, object], tuple[int, dict[Factor, int]]] = {}
+
+
+def _factored_once(
+    ring: ParameterRing, polynomial: fmpz_mpoly
+) -> tuple[int, dict[Factor, int]]:
+    """Unit and factors; many coefficients of a result share a short numerator."""
+    key = ring, polynomial_key(polynomial)
+    found = _short_numerators.get(key)
+    if found is None:
+        unit, _, factors = factorise(ring, polynomial)
+        if len(_short_numerators) >= REMEMBERED_NUMERATORS:
+            _short_numerators.clear()
+        found = _short_numerators[key] = int(unit), factors
+    return found
 
 
 def _grouped(

@@ -76,12 +76,12 @@ class _Terms(dict[str, str]):
 
     def __missing__(self, word: str) -> str:
         style = self._style
-        digits, _, monomial = word.partition("*")
-        if not digits.isdecimal():
+        if word[0] <= "9":  # a digit; names begin with letters
+            digits, star, monomial = word.partition("*")
+            shown = f"{digits}{style.times}{self[monomial]}" if star else digits
+        else:
             shown = style.times.join(
                 style.raised(style.name(n), e) for n, e in powers_of_word(self._ring, word))
-        else:
-            shown = f"{digits}{style.times}{self[monomial]}" if monomial else digits
         if len(self) >= REMEMBERED_TERMS:
             self.clear()
         self[word] = shown

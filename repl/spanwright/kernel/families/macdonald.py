@@ -11,6 +11,8 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 
+from flint import fmpz_mpoly
+
 from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.errors import OutsideDomain
@@ -32,8 +34,9 @@ from spanwright.kernel.families.symmetric_base import (
     polynomial_of_monomial_symmetric,
 )
 from spanwright.kernel.indices import decreasing, orbit, padded, partitions, trimmed
-from spanwright.kernel.laurent import LaurentPolynomial, Terms, total_polynomial
-from spanwright.kernel.lines import divided_differences, lines
+from spanwright.kernel.laurent import LaurentPolynomial, Terms
+from spanwright.kernel.lines import hecke_image
+from spanwright.kernel.parameters import Exponents
 
 BoxRatio = Callable[[Partition, int, int], Scalar]
 """b_lambda(s) for the box s = (row, column) of lambda."""
@@ -245,38 +248,95 @@ def from_nonsymmetric(terms: Mapping[Index, Scalar], n: int) -> Coefficients:
 def applied_t(polynomial: LaurentPolynomial, i: int) -> LaurentPolynomial:
     """T_i f = t s_i f + (1 - t) x_(i+1) (f - s_i f)/(x_i - x_(i+1)), i from 1."""
     ring = polynomial.ring
-    t = ring.context.gen(ring.slot("t"))
-    rest = 1 - t
-    terms: Terms = {}
-    for line in lines(polynomial.terms, i):
-        found = {line.size - k: c * t for k, c in line.coefficients.items()}
-        for k, c in divided_differences(line).items():
-            known = found.get(k)
-            found[k] = c * rest if known is None else known + c * rest
-        for k, c in found.items():
-            if c:
-                terms[line.exponents(k)] = c
-    return LaurentPolynomial.reduced(polynomial.n, ring, terms, polynomial.scale)
+    terms = hecke_image(polynomial.terms, i, ring.context.gen(ring.slot("t")))
+    # T_i is invertible over Z[t, 1/t]: no factor of a denominator can come to divide all terms
+    return LaurentPolynomial.reduced(polynomial.n, ring, terms, polynomial.scale, suspects=())
 
 
 def by_symmetrisation(partition: Partition, n: int) -> LaurentPolynomial:
     """P_lambda = sum over minimal coset representatives w of T_w E_lambda, lambda decreasing.
 
-    The representatives for S_m in S_(m+1) are 1, T_m, T_(m-1) T_m, ...; stabilisers act by their
-    Poincare polynomials, divided out at the end.
+    E_lambda is symmetric in every block of equal parts. The longest block grows by a position at
+    a time, to the right by 1 + T_b + T_(b-1) T_b + ..., then to the left; the other blocks act by
+    their Poincare polynomials, divided out at the end. Of the last sum only one exponent an orbit
+    is worked out.
     """
     lam = padded(partition, n)
+    if n == 0 or lam[0] == lam[-1]:
+        return nonsymmetric.to_monomials(lam)
+    if lam[-1]:
+        low = lam[-1]
+        below = trimmed(tuple(part - low for part in lam))
+        return by_symmetrisation(below, n).shifted((low,) * n)
     f = nonsymmetric.to_monomials(lam)
-    for m in range(1, n):
-        summands = [f]
-        for i in range(m, 0, -1):
-            summands.append(applied_t(summands[-1], i))
-        f = total_polynomial(summands)
+    ring = f.ring
+    t = ring.context.gen(ring.slot("t"))
+    chains, poincare = _coset_chains(lam)
+    terms = f.terms
+    for chain in chains[:-1]:
+        terms = _summed_along(terms, chain, t)
+    # where the last T_i takes two exponents, small ones make for short lines
+    is_leftwards = chains[-1][-1] > chains[-1][0]
+    wanted = {
+        padded(nu, n) if is_leftwards else padded(nu, n)[::-1]
+        for nu in partitions(sum(lam), n) if nu <= trimmed(lam)}
+    terms = _summed_along(terms, chains[-1], t, wanted)
+    # decreasing exponents, among them the largest of all, settle the sign
+    representatives = LaurentPolynomial.reduced(
+        n, ring, {decreasing(e): c for e, c in terms.items()}, f.scale * poincare.inverse())
+    return LaurentPolynomial(
+        n, ring, {e: c for nu, c in representatives.terms.items() for e in orbit(nu)},
+        representatives.scale)
+
+
+def _coset_chains(lam: Index) -> tuple[list[list[int]], Scalar]:
+    """For every position that the longest block grows by, the i of T_i, T_j T_i, ...; and [k]_t!.
+
+    The product of [k]_t! is over the lengths k of the other blocks.
+    """
+    n = len(lam)
+    longest = max(set(lam), key=lam.count)
+    first = lam.index(longest)
+    last = first + lam.count(longest) - 1
+    chains = [list(range(b, first, -1)) for b in range(last + 1, n)]
+    chains += [list(range(a, n)) for a in range(first, 0, -1)]
     poincare = ONE
-    for part in set(lam):
+    for part in set(lam) - {longest}:
         for k in range(2, lam.count(part) + 1):  # [k]_t = (1 - t^k)/(1 - t)
             poincare = poincare * one_minus((0, k)) * one_minus((0, 1)).inverse()
-    return f.scaled(poincare.inverse())
+    return chains, poincare
+
+
+def _summed_along(
+    terms: Terms, chain: list[int], t: fmpz_mpoly, wanted: set[Exponents] | None = None
+) -> Terms:
+    """f + T_i f + T_j T_i f + ... for the chain i, j, ...; at the `wanted` exponents alone."""
+    needed: list[set[Exponents] | None] = [wanted]
+    for i in reversed(chain):
+        needed.append(None if needed[-1] is None else _on_lines(needed[-1], i))
+    needed.reverse()
+    result: Terms = {}
+    for place in range(len(chain) + 1):
+        if place:
+            terms = hecke_image(_restricted(terms, needed[place - 1]), chain[place - 1], t)
+        budget.current().check()
+        for e, c in _restricted(terms, wanted).items():
+            known = result.get(e)
+            result[e] = c if known is None else known + c
+    return {e: c for e, c in result.items() if c}
+
+
+def _on_lines(exponents: set[Exponents], i: int) -> set[Exponents]:
+    """All exponents on whose coefficients those of T_i f at the given ones depend."""
+    return {
+        (*e[: i - 1], k, e[i - 1] + e[i] - k, *e[i + 1 :])
+        for e in exponents for k in range(e[i - 1] + e[i] + 1)}
+
+
+def _restricted(terms: Terms, exponents: set[Exponents] | None) -> Terms:
+    if exponents is None:
+        return terms
+    return {e: c for e, c in terms.items() if e in exponents}
 
 
 # Pieri rules

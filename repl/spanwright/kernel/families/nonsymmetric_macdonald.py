@@ -12,8 +12,6 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import lru_cache
 
-from flint import fmpz_mpoly
-
 from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.families.base import Coefficients, Family, Index, check_composition
@@ -26,7 +24,7 @@ from spanwright.kernel.indices import (
     swapped,
 )
 from spanwright.kernel.laurent import LaurentPolynomial, Terms
-from spanwright.kernel.lines import Line, divided_differences, lines
+from spanwright.kernel.lines import hecke_images, lines
 from spanwright.kernel.parameters import ParameterRing
 
 RING = ParameterRing.get()
@@ -169,14 +167,14 @@ def _raised(polynomial: LaurentPolynomial, nu: Composition) -> LaurentPolynomial
         # q^(nu_n - e_n), kept whole by taking q^(nu_n - top) out
         terms[(e[-1] + 1, *e[:-1])] = c * powers[top - e[-1]]
     scale = polynomial.scale * weight_scalar((nu[-1] - top, 0))
-    return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale)
+    # powers of q apart, the coefficients are the old ones
+    return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale, suspects=())
 
 
 def _intertwined(polynomial: LaurentPolynomial, nu: Composition, i: int) -> LaurentPolynomial:
     """E_(s_i nu) = (T_i + (1-t)/(1-z)) E_nu for nu_i > nu_(i+1), z = u_i(nu)/u_(i+1)(nu).
 
-    With T_i = t s_i + (1-t) x_(i+1) d_i this is, over the denominator 1 - z,
-    (1-z) t s_i f + (1-t) [(1-z) x_(i+1) d_i f + f].
+    Over the denominator 1 - z this is (1 - z) T_i f + (1 - t) f.
     """
     ring = polynomial.ring
     u = weights(nu)
@@ -186,36 +184,25 @@ def _intertwined(polynomial: LaurentPolynomial, nu: Composition, i: int) -> Laur
     shift = max(-t_power, 0)
     if q_power < 0:
         raise AssertionError("z has a positive power of q when nu_i > nu_(i+1)")
-    high = ring.context.from_dict({(t_power + shift, q_power): 1})
-    unit = ring.context.from_dict({(shift, 0): 1})
-    one_minus_z = unit - high
-    t = ring.context.gen(0)
-    straight, turned = one_minus_z * (1 - t), one_minus_z * t
-    own = unit * (1 - t)
+    power = ring.context.from_dict({(t_power + shift, q_power): 1})
+    unit = ring.context.from_dict({(shift, 0): 1}) if shift else None
+    t, zero = ring.context.gen(0), ring.context.constant(0)
     terms: Terms = {}
     for line in lines(polynomial.terms, i):
-        _intertwine_line(line, straight, turned, own, terms)
+        own = line.coefficients
+        moved = hecke_images(line, t)
+        # powers of t and q are all that is multiplied by, and that is cheap
+        for k in moved.keys() | own.keys():
+            image, c = moved.get(k, zero), own.get(k, zero)
+            value = image + c - c * t
+            if unit is not None:
+                value = value * unit
+            value = value - image * power
+            if value:
+                terms[line.exponents(k)] = value
     scale = polynomial.scale * one_minus(z).inverse() * weight_scalar((0, -shift))
-    return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale)
-
-
-def _intertwine_line(
-    line: Line, straight: fmpz_mpoly, turned: fmpz_mpoly, own: fmpz_mpoly, terms: Terms
-) -> None:
-    """Add straight * x_(i+1) d_i f + turned * s_i f + own * f for one line."""
-    size = line.size
-    found: dict[int, fmpz_mpoly] = {}
-    for k, c in divided_differences(line).items():
-        found[k] = c * straight
-    for k, c in line.coefficients.items():
-        mirror = size - k
-        known = found.get(mirror)
-        found[mirror] = c * turned if known is None else known + c * turned
-        known = found.get(k)
-        found[k] = c * own if known is None else known + c * own
-    for k, c in found.items():
-        if c:
-            terms[line.exponents(k)] = c
+    return LaurentPolynomial.reduced(
+        polynomial.n, ring, terms, scale, suspects=quadratic(z).factors)
 
 
 # from monomials
