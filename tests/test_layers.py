@@ -211,9 +211,7 @@ MAY_IMPORT: dict[str, tuple[str, ...]] = {
             "files", "process", "replies", "session", "settings")),
     ),
     "spanwright.crashes": (*_TREE, "spanwright.context"),
-    "spanwright.quick": (*_TREE, *_GROUND),
     "spanwright.evaluating": (
-        "spanwright.quick",
         *_TREE,
         "spanwright_grammar.parsing",
         *_SESSION,

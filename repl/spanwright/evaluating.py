@@ -1,17 +1,19 @@
-"""The evaluator process: runs a session for a front end, one checkpoint before each sentence.
+"""The evaluator process: runs a session for a front end, with a checkpoint close behind.
 
-A checkpoint is a fork: the child carries the sentence out under its limits, up to the text of the
-reply, and becomes the session when that is done; its parent then ends. When the child is stopped,
-aborts, crashes or fails, the parent goes on with the session from before the sentence. The parent
-alone decides which, so that a late request to stop never ends a finished sentence.
+A checkpoint is a fork: the child goes on as the session, and its parent stays as its keeper, with
+the session as it was. While a sentence runs, the keeper watches its time and the requests to stop.
+When the session is stopped, aborts, crashes or is full of debris, the keeper takes its place: it
+runs again what was run since the fork, and answers for the sentence. The keeper alone decides
+which, so that a late request to stop never ends a finished sentence. A checkpoint is renewed before
+there is more than RENEWED_AFTER to run again, if possible while nobody waits.
 
-    front end ──requests──► holder ──fork──► child        frames: length, then JSON
-              ◄──frames───  holder ◄──notes── child       control: the id of the request to stop
+    front end ──requests──► session ◄─answers── keeper      frames: length, then JSON
+              ◄──frames───  session ──notes───► keeper      control: the id of the request to stop
 
-Only the holder writes frames: a child tells its parent, or is the holder by then. The first
-process adopts orphans (PR_SET_CHILD_SUBREAPER) and ends when the last holder has ended. A child
-dies with its parent (PR_SET_PDEATHSIG), and all die when the front end is gone: its end of the
-pipes closes, whatever ended it. Systems without prctl lose only what these two give.
+The session writes the frames, and the keeper those on what a running sentence has reached. The
+first process adopts orphans (PR_SET_CHILD_SUBREAPER) and ends when all others have. A session at
+work dies with its keeper (PR_SET_PDEATHSIG), and all die when the front end is gone: its end of
+the pipes closes, whatever ended it. Systems without prctl lose only what these two give.
 """
 
 from __future__ import annotations
@@ -26,11 +28,11 @@ import signal
 import sys
 import time
 from collections.abc import Callable, Iterator
-from dataclasses import asdict, dataclass, replace
+from dataclasses import asdict, dataclass, field, replace
 from pathlib import Path
 from typing import Any, NoReturn
 
-from spanwright import means
+from spanwright import gateway, means
 from spanwright.confinement import (
     adopt_orphans,
     default_memory,
@@ -44,7 +46,6 @@ from spanwright.files import Folder
 from spanwright.frames import HEADER, encoded, read_exactly, receive, write_all
 from spanwright.kernel import budget
 from spanwright.means import Means
-from spanwright.quick import is_quick
 from spanwright.session import Outcome, Session
 from spanwright.settings import Bounds
 from spanwright_grammar import syntax
@@ -53,16 +54,30 @@ from spanwright_grammar.source import Source, Span
 
 REQUESTS, STANDARD_OUTPUT, ERRORS = 0, 1, 2
 
+RENEWED_AFTER = 0.1
+"""Seconds of work that a keeper may have to do again."""
 NOTES_APART = 0.2
 """Seconds between two notes on what has been reached."""
 BURIAL = 0.15
-"""Seconds that a killed child has to give its memory back before the reply goes out."""
+"""Seconds that a killed session has to give its memory back before the reply goes out."""
 MOST_SHOWN = 200
 """Characters of a running sentence, or of what it has reached, that a front end is told."""
+ORDINARY = "claim x_1 x_2 + {0} = x_2 x_1 + {0}; x_1 E_(0,1,0)"
+"""With a number that makes it a new text each time, for texts are remembered."""
+LEAVES_DEBRIS = ("internal-error", "over-budget", "too-large")
+"""Codes of failures behind which memory may be full of what came to nothing."""
 
 
 class _Stopped(BaseException):
     """The front end asked to stop while this process was at work itself."""
+
+
+class _Restored(Exception):
+    """This keeper is the session again; `rest` is what is left of the request at hand."""
+
+    def __init__(self, rest: dict[str, Any]) -> None:
+        super().__init__()
+        self.rest = rest
 
 
 # the session
@@ -70,14 +85,42 @@ class _Stopped(BaseException):
 
 @dataclass(frozen=True, slots=True)
 class _Links:
-    """A child's ends of its two pipes."""
+    """The keeper's process, and a session's ends of the two pipes to it."""
 
+    keeper: int
     notes: int
     answers: int
 
     def close(self) -> None:
         os.close(self.notes)
         os.close(self.answers)
+
+
+@dataclass(frozen=True, slots=True)
+class _NoticingFolder(Folder):
+    """A folder that knows whether it was used: that must not be done a second time."""
+
+    uses: list[str] = field(default_factory=list)
+
+    def read(self, path: str) -> tuple[Path, str]:
+        self.uses.append(path)
+        return Folder.read(self, path)
+
+    def place_to_write(self, path: str) -> Path:
+        self.uses.append(path)
+        return Folder.place_to_write(self, path)
+
+
+@dataclass(frozen=True, slots=True)
+class _Text:
+    """A request, and its text in sentences."""
+
+    request: dict[str, Any]
+    source: Source
+    chunks: tuple[Chunk, ...]
+
+
+NO_TEXT = _Text({"id": 0}, Source(""), ())
 
 
 class CheckpointedSession(Session):
@@ -89,118 +132,176 @@ class CheckpointedSession(Session):
     usual_memory: int = 4 * 10**9
     means: Means = Means()
     is_digested: bool = False
-    _request: dict[str, Any]
+    uses: list[str]
+    """The files that sentences have used since the last checkpoint."""
+    _text: _Text = NO_TEXT
     _is_stopped: bool = False
     _dying: tuple[int, ...] = ()
-    # of a child alone
+    # the keeper, the seconds since it was made, the sentences and texts it does not know yet
     _links: _Links | None = None
+    _age: float = 0.0
+    _untold: tuple[tuple[dict[str, Any], int], ...] = ()
+    _known: frozenset[int] = frozenset()
+    # the sentence that is watched
+    _is_watched: bool = False
     _limit: MemoryLimit = MemoryLimit(0, None)
     _last_note: float = 0.0
     _reached: str = ""
 
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        self.uses = []
+        place = self.folder
+        self.folder = _NoticingFolder(
+            place.root, place.allows_outside, place.output, self.uses)
+
     def serve(self) -> None:
         """Answer requests until there are no more."""
+        request: dict[str, Any] | None = None
         while True:
-            while self._dying and not select.select([REQUESTS], [], [], 0.05)[0]:
-                self._bury()
-            request = receive(REQUESTS)
-            if request is None:
-                return
-            self.answer(request)
+            try:
+                if request is not None:
+                    self.answer(request)
+                # a tree that a keeper holds as well would be copied to be let go
+                self._text = NO_TEXT
+                if self._is_due():
+                    # now, when nobody may be waiting, rather than with the next sentence
+                    with contextlib.suppress(OSError):
+                        self._checkpoint()
+                        self._touch()
+                while self._dying and not select.select([REQUESTS], [], [], 0.05)[0]:
+                    self._bury()
+                request = receive(REQUESTS)
+                if request is None:
+                    return
+            except _Restored as restored:
+                request = restored.rest
 
     def answer(self, request: dict[str, Any]) -> None:
         """Run a text's sentences but for the first `skip`, and send a frame for each.
 
         A `begin` frame goes before each reply, a `state` frame behind the last.
         """
-        self._request, self._is_stopped, self.has_quit = request, False, False
+        self.has_quit, self._is_stopped = False, request.get("is_over", False)
         self.n_sentences = request["after"]
-        source = Source(request["say"], request["name"])
-        try:
-            # long texts take their time, and nothing can be lost
-            with self._interruptible():
-                chunks = parse(source).chunks[request["skip"]:]
-        except _Stopped:
-            first = Span(0, len(source.text.partition("\n")[0]))
-            chunks = (Chunk(first, None, (failure("stopped", first, "stopped").diagnostic,)),)
-        for chunk in chunks:
-            status = self._answer_one(source, chunk)
+        started = time.monotonic()
+        self._read_text(request)
+        self._age += time.monotonic() - started
+        for place in range(request["skip"], len(self._text.chunks)):
             if self._is_stopped or self.has_quit:
                 break
+            status = self._answer_one(place)
             if status != "ok" and request["stops_at_first"]:
                 break
         write_all(encoded({"state": asdict(self.state()), "id": request["id"]}), self.frames)
 
-    def _answer_one(self, source: Source, chunk: Chunk) -> str:
+    def _read_text(self, request: dict[str, Any]) -> None:
+        source = Source(request["say"], request["name"])
+        self._text = _Text(request, source, ())
+        if self._is_stopped:
+            return
+        try:
+            # long texts take their time, and nothing can be lost
+            with self._interruptible():
+                self._text = _Text(request, source, parse(source).chunks)
+        except _Stopped:
+            first = Span(0, len(source.text.partition("\n")[0]))
+            wrong = Chunk(first, None, (failure("stopped", first, "stopped").diagnostic,))
+            self._is_stopped = False  # the loop ends with this chunk
+            self._text = _Text(request, source, (wrong,) * (request["skip"] + 1))
+
+    def _answer_one(self, place: int) -> str:
         """Run one sentence, send what came of it, and tell its status."""
+        source, chunk = self._text.source, self._text.chunks[place]
         line, column = source.position(chunk.span.start)
         write_all(encoded({"begin": {
             "sentence": self.n_sentences + 1, "line": line, "column": column,
             "source": source.slice(chunk.span).strip()[:MOST_SHOWN]}}), self.frames)
-        if chunk.sentence is not None and self._must_stop():
-            outcome = self._undone(source, chunk, "stopped", "stopped")
-        elif chunk.sentence is None or is_quick(chunk.sentence, self.context):
-            outcome = self._run_chunk(source, chunk)
-        else:
-            return self._at_checkpoint(source, chunk)
-        write_all(self._frame(outcome), self.frames)
-        return outcome.status
-
-    def _at_checkpoint(self, source: Source, chunk: Chunk) -> str:
-        """Run one sentence in a child, which returns from here when the session is now in it."""
-        limit = self._memory_limit()
-        if os.lseek(ERRORS, 0, os.SEEK_CUR):
-            _forget_errors()
-        notes, child_notes = os.pipe()
-        child_answers, answers = os.pipe()
         started = time.monotonic()
-        holder = os.getpid()
+        if chunk.sentence is None:
+            outcome = self._run_chunk(source, chunk)
+            frame, status = self._frame(outcome), outcome.status
+        elif self._must_stop():
+            outcome = self._undone(source, chunk.span, failure("stopped", chunk.span, "stopped"))
+            frame, status = self._frame(outcome), outcome.status
+        else:
+            frame, status = self._run_watched(source, chunk, place)
+        write_all(frame, self.frames)
+        self._age += time.monotonic() - started
+        if status != "error":
+            self._untold = (*self._untold, (self._text.request, place))
+        return status
+
+    # with a keeper
+
+    def _is_due(self) -> bool:
+        """Whether there must be a new checkpoint before a sentence is watched."""
+        return self._links is None or self._age > RENEWED_AFTER or bool(self.uses)
+
+    def _checkpoint(self) -> None:
+        """Go on as a child of this process, which is its keeper from here on.
+
+        Raises OSError when the system has no room for one more process, and _Restored, in the
+        keeper, when that is to be the session again.
+        """
+        notes, their_notes = os.pipe()
+        their_answers, answers = os.pipe()
+        keeper, former = os.getpid(), self._links
         try:
             child = os.fork()
-        except OSError as error:
-            for fd in (notes, child_notes, child_answers, answers):
+        except OSError:
+            for fd in (notes, their_notes, their_answers, answers):
                 os.close(fd)
-            outcome = self._undone(
-                source, chunk, "over-budget",
-                f"the system has no room for one more process ({error.strerror})")
-            write_all(self._frame(outcome), self.frames)
-            return outcome.status
+            raise
         if child == 0:
             os.close(notes)
             os.close(answers)
-            return self._as_child(
-                source, chunk, _Links(child_notes, child_answers), limit, holder)
-        os.close(child_notes)
-        os.close(child_answers)
+            if former is not None:
+                former.close()
+            self._links = _Links(keeper, their_notes, their_answers)
+            self._age, self._untold = 0.0, ()
+            self._known = frozenset((self._text.request["id"],))
+            self.uses.clear()
+            return
+        os.close(their_notes)
+        os.close(their_answers)
+        if former is not None:
+            with contextlib.suppress(BrokenPipeError):
+                write_all(b"X", former.notes)
+            former.close()
+        self._links = None
+        self._stand_by(child, notes, answers)
+
+    def _touch(self) -> None:
+        """Write to most memory that a sentence writes to, so that the next one copies less."""
+        if select.select([REQUESTS], [], [], 0)[0]:
+            return
+        for outcome in Session(n=3).run_all(Source(ORDINARY.format(os.getpid()))):
+            encoded({"reply": outcome.reply(is_digested=self.is_digested).to_data()})
+
+    def _run_watched(self, source: Source, chunk: Chunk, place: int) -> tuple[bytes, str]:
+        """Run one sentence under its limits while the keeper watches; its frame and status."""
         try:
-            found = self._watch(child, source, chunk, notes, answers, limit, started)
-        finally:
-            os.close(notes)
-            os.close(answers)
-        if isinstance(found, bytes):
-            # the sentence was wrong; its numbers went with the child
-            self.n_sentences += 1
-            write_all(found, self.frames)
-            return "error"
-        write_all(self._frame(found), self.frames)
-        return found.status
-
-    # the child
-
-    def _as_child(
-        self, source: Source, chunk: Chunk, links: _Links, limit: MemoryLimit, holder: int
-    ) -> str:
-        end_with_parent(holder)
+            limit = self._begin(place)
+        except OSError as error:
+            outcome = self._undone(source, chunk.span, failure(
+                "over-budget", chunk.span,
+                f"the system has no room for one more process ({error.strerror})"))
+            return self._frame(outcome), outcome.status
+        assert self._links is not None
+        if os.lseek(ERRORS, 0, os.SEEK_CUR):
+            _forget_errors()
+        started = time.monotonic()
+        end_with_parent(self._links.keeper)
         limits = resource.getrlimit(resource.RLIMIT_AS)
-        self._links, self._limit, self._dying = links, limit, ()
-        self._last_note, self._reached = 0.0, ""
+        self._limit, self._last_note, self._reached, self._is_watched = limit, 0.0, "", True
         if limit.bound is not None:
             resource.setrlimit(resource.RLIMIT_AS, (limit.bound, limits[1]))
         outcome = self._run_chunk(source, chunk)
         try:
             frame = self._frame(outcome)
         except Exception as error:
-            # a result that cannot be shown is as good as none
+            # a result that cannot be shown is as good as none, and the session holds it already
             self.n_sentences -= 1
             if isinstance(error, MemoryError):
                 self._lift_limit()
@@ -210,24 +311,53 @@ class CheckpointedSession(Session):
                     "internal-error", chunk.span,
                     "the program failed here, and the fault is not yours; please report "
                     f"{type(error).__name__}: {str(error)[:200]}")
-            outcome = self._failed(source, chunk, found)
-            frame = self._frame(outcome)
-        if outcome.status == "error":
-            # nothing has changed: the parent is the better session, it holds no debris
-            write_all(b"E" + frame, links.notes)
-            os._exit(0)
+            self._give_up(self._frame(self._undone(source, chunk.span, found)))
+        if outcome.status == "error" and (
+            outcome.diagnostics[0].code in LEAVES_DEBRIS
+            or time.monotonic() - started > RENEWED_AFTER
+        ):
+            self._give_up(frame)
         resource.setrlimit(resource.RLIMIT_AS, limits)
+        self._is_watched = False
         outlive_parent()
-        write_all(b"D", links.notes)
-        if os.read(links.answers, 1) != b"G":
+        write_all(b"D", self._links.notes)
+        if os.read(self._links.answers, 1) != b"G":
             os._exit(1)
-        links.close()
-        self._links = None
-        write_all(frame, self.frames)
-        return outcome.status
+        return frame, outcome.status
+
+    def _begin(self, place: int) -> MemoryLimit:
+        """Have a keeper watch a sentence from here on; what it may take. Raises OSError."""
+        while True:
+            if self._is_due():
+                self._checkpoint()
+            assert self._links is not None
+            limit = self._memory_limit()
+            sentences = (*self._untold, (self._text.request, place))
+            requests = {request["id"]: request for request, _ in sentences}
+            note = {
+                "sentences": [(request["id"], place) for request, place in sentences],
+                "requests": [r for number, r in requests.items() if number not in self._known],
+                "after": self.n_sentences,
+                "amount": limit.amount, "bound": limit.bound, "is_systems": limit.is_systems,
+                "seconds": self.context.settings.seconds}
+            try:
+                write_all(b"B" + encoded(note), self._links.notes)
+            except BrokenPipeError:
+                # the keeper has ended, and a new one is made
+                self._links.close()
+                self._links = None
+                continue
+            self._untold, self._known = (), self._known | requests.keys()
+            return limit
+
+    def _give_up(self, frame: bytes) -> NoReturn:
+        """Nothing has changed: the keeper is the better session, it holds no debris."""
+        assert self._links is not None
+        write_all(b"E" + frame, self._links.notes)
+        os._exit(0)
 
     def guarded(self, sentence: syntax.Sentence, action: Callable[[], Any]) -> Any:
-        """Carry `action` out with the clock left to the parent, which needs no help to stop it."""
+        """Carry `action` out with the clock left to the keeper, which needs no help to stop it."""
         limits = replace(
             budget.current(), is_spent=_never, report=self._report,
             max_bytes=self.context.settings.memory or self.usual_memory)
@@ -248,46 +378,91 @@ class CheckpointedSession(Session):
             raise too_much_memory(self._limit, sentence.place, self._reached) from error
 
     def _lift_limit(self) -> None:
-        """What is said about memory needs a little of it; this child ends soon."""
-        if self._links is not None:
+        """What is said about memory needs a little of it; this process ends soon."""
+        if self._is_watched:
             hard = resource.getrlimit(resource.RLIMIT_AS)[1]
             resource.setrlimit(resource.RLIMIT_AS, (hard, hard))
 
     def _report(self, reached: str) -> None:
         """Tell what has been reached, a few times a second at most."""
         now = time.monotonic()
-        if self._links is not None and now - self._last_note > NOTES_APART:
+        if self._is_watched and self._links is not None and now - self._last_note > NOTES_APART:
             self._last_note = now
             self._reached = reached[:MOST_SHOWN]
             text = self._reached.encode()
             write_all(b"N" + HEADER.pack(len(text)) + text, self._links.notes)
 
-    # the parent
+    # as a keeper
+
+    def _stand_by(self, child: int, notes: int, answers: int) -> NoReturn:
+        """Watch the session until there is a new keeper, or this one must take its place."""
+        texts = {self._text.request["id"]: self._text}
+        since: list[tuple[int, int]] = []
+        while True:
+            mark = os.read(notes, 1)
+            note = receive(notes) if mark == b"B" else None
+            if note is None:
+                # X: there is a new keeper; nothing: the session ended between two sentences
+                os._exit(0)
+            texts.update({
+                request["id"]: _Text(request, Source(""), ()) for request in note["requests"]})
+            *others, (number, place) = note["sentences"]
+            since += others
+            self._text, self._is_stopped = texts[number], False
+            found = self._watch(child, note, notes, answers)
+            if found is not None:
+                break
+        os.close(notes)
+        os.close(answers)
+        for key in {number, *(key for key, _ in since)}:
+            request = texts[key].request
+            if not texts[key].chunks:
+                source = Source(request["say"], request["name"])
+                texts[key] = _Text(request, source, parse(source).chunks)
+        for key, k in since:
+            if self._run_chunk(texts[key].source, texts[key].chunks[k]).status == "error":
+                # it was no error before: the front end tells a new evaluator all of it
+                os._exit(1)
+        self._text = text = texts[number]
+        self.n_sentences = note["after"]
+        if isinstance(found, bytes):
+            self.n_sentences += 1
+            write_all(found, self.frames)
+        else:
+            span = text.chunks[place].span
+            outcome = self._undone(text.source, span, found(span), note["elapsed"])
+            write_all(self._frame(outcome), self.frames)
+        raise _Restored({
+            **text.request, "skip": place + 1, "after": self.n_sentences,
+            "is_over": self._is_stopped or text.request["stops_at_first"]})
 
     def _watch(
-        self, child: int, source: Source, chunk: Chunk, notes: int, answers: int,
-        limit: MemoryLimit, started: float,
-    ) -> Outcome | bytes:
-        """Wait for a child; ends this process when it has become the session."""
-        seconds = self.context.settings.seconds
+        self, child: int, note: dict[str, Any], notes: int, answers: int
+    ) -> Callable[[Span], Failure] | bytes | None:
+        """Wait for the end of a sentence: None when all is well, else what is to be answered.
+
+        That is a frame, or the failure for the sentence's place; `note` gets the time it took.
+        """
+        seconds = note["seconds"]
+        started = time.monotonic()
         reached = ""
         while True:
             left = None if seconds is None else max(0.0, started + seconds - time.monotonic())
             ready, _, _ = select.select([notes, self.control], [], [], left)
+            note["elapsed"] = time.monotonic() - started
             if self.control in ready and self._must_stop():
-                return self._killed(child, source, chunk, started, "stopped", "stopped", reached)
+                return self._killed(child, "stopped", "stopped", reached)
             if notes in ready:
                 mark = os.read(notes, 1)
                 if mark == b"D":
                     if self._must_stop():
-                        return self._killed(
-                            child, source, chunk, started, "stopped", "stopped", reached)
-                    # from here on the child is the session
+                        return self._killed(child, "stopped", "stopped", reached)
+                    # from here on the sentence stands
                     write_all(b"G", answers)
-                    os._exit(0)
+                    return None
                 told = _told(notes) if mark else None
                 if told is None:
-                    # cut in the middle: the child is no more
+                    # cut in the middle: the session is no more
                     break
                 if mark == b"E":
                     os.waitpid(child, 0)
@@ -296,51 +471,44 @@ class CheckpointedSession(Session):
                 write_all(encoded({"progress": reached}), self.frames)
             elif not ready:
                 return self._killed(
-                    child, source, chunk, started, "over-budget",
+                    child, "over-budget",
                     f"stopped after {seconds} second{'' if seconds == 1 else 's'}", reached,
                     f"fix seconds = {2 * (seconds or 1)}")
         _, status, usage = os.wait4(child, 0)
-        found = crash(
-            status, _last_words(), usage.ru_maxrss * 1024, limit, chunk.span, reached)
-        return self._failed(source, chunk, found, time.monotonic() - started)
+        gateway.stop_work()
+        limit = MemoryLimit(note["amount"], note["bound"], note["is_systems"])
+        words, most = _last_words(), usage.ru_maxrss * 1024
+        return lambda span: crash(status, words, most, limit, span, reached)
 
     def _killed(
-        self, child: int, source: Source, chunk: Chunk, started: float, code: str, message: str,
-        reached: str, *hints: str,
-    ) -> Outcome:
-        """End a child that has not been told to go on."""
+        self, child: int, code: str, message: str, reached: str, *hints: str
+    ) -> Callable[[Span], Failure]:
+        """End a session that has not been told to go on."""
         os.kill(child, signal.SIGKILL)
+        gateway.stop_work()
         self._dying = (*self._dying, child)
         # some gigabytes take longer to give back than a prompt should wait
         until = time.monotonic() + BURIAL
         while self._bury() and time.monotonic() < until:
             time.sleep(0.002)
-        return self._undone(source, chunk, code, f"{message}{so_far(reached)}", *hints,
-                            seconds=time.monotonic() - started)
+        return lambda span: failure(code, span, f"{message}{so_far(reached)}", *hints)
 
     def _bury(self) -> bool:
         """Whether killed children are still about."""
         self._dying = tuple(pid for pid in self._dying if os.waitpid(pid, os.WNOHANG)[0] == 0)
         return bool(self._dying)
 
+    # outcomes and limits
+
     def _undone(
-        self, source: Source, chunk: Chunk, code: str, message: str, *hints: str,
-        seconds: float = 0.0,
+        self, source: Source, span: Span, found: Failure, seconds: float = 0.0
     ) -> Outcome:
         """The outcome of a sentence that left no trace."""
         self.n_sentences += 1
-        found = failure(code, chunk.span, message, *hints).diagnostic
-        return self._outcome(source, chunk.span, "error", None, None, (found,), seconds)
-
-    def _failed(
-        self, source: Source, chunk: Chunk, found: Failure, seconds: float = 0.0
-    ) -> Outcome:
-        return self._undone(
-            source, chunk, found.diagnostic.code, found.diagnostic.message,
-            *found.diagnostic.hints, seconds=seconds)
+        return self._outcome(source, span, "error", None, None, (found.diagnostic,), seconds)
 
     def _frame(self, outcome: Outcome) -> bytes:
-        wanted = bool(self._request["is_recorded"])
+        wanted = bool(self._text.request["is_recorded"])
         reply = outcome.reply(
             is_recorded=wanted or outcome.status == "error", is_digested=self.is_digested)
         return encoded({"reply": reply.to_data()})
@@ -354,7 +522,7 @@ class CheckpointedSession(Session):
                 return self._is_stopped
             if not asked:
                 _end_quietly()
-            if HEADER.unpack(asked)[0] == self._request["id"]:
+            if HEADER.unpack(asked)[0] == self._text.request["id"]:
                 self._is_stopped = True
 
     @contextlib.contextmanager
@@ -431,8 +599,10 @@ def main() -> None:
     adopt_orphans()
     # an abort under the limits is nothing to keep an image of
     resource.setrlimit(resource.RLIMIT_CORE, (0, resource.getrlimit(resource.RLIMIT_CORE)[1]))
+    # a child of the process that stays, and held by those that come and go
+    ends = gateway.start_ahead(given["means"].get("cluster"))
     if os.fork():
-        _reap(control)
+        _reap(control, *ends)
     os.set_blocking(control, False)
     output = None if given["output"] is None else Path(given["output"])
     session = CheckpointedSession(
@@ -470,10 +640,9 @@ def _keep_what_is_printed() -> None:
     os.close(fd)
 
 
-def _reap(control: int) -> NoReturn:
-    """Wait for all that are or become children of this process."""
-    os.close(control)
-    for fd in (REQUESTS, STANDARD_OUTPUT):
+def _reap(*ends: int) -> NoReturn:
+    """Wait for all that are or become children of this process, which holds no ends of pipes."""
+    for fd in (*ends, REQUESTS, STANDARD_OUTPUT):
         os.close(fd)
     while True:
         try:

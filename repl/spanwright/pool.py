@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import gc
 import json
+import math
 import os
 import select
 import signal
@@ -21,6 +22,7 @@ import subprocess
 import sys
 import threading
 import time
+from collections import deque
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field, replace
 from typing import Any, NoReturn, Protocol
@@ -38,6 +40,8 @@ N_TRIES = 5
 """A case whose worker is killed from outside this often is given up."""
 WINDOW = 50_000
 """Cases that may be finished ahead of the first unfinished one: they wait in memory."""
+LOOKING_AHEAD = 0.02
+"""Seconds that may be spent at once on finding out how many cases are left."""
 GRACE = 0.5
 """A case that looks at its clock stops by itself; this is for one that cannot."""
 TICK = 0.2
@@ -113,6 +117,14 @@ def stopped_after(seconds: float | None) -> str:
 
 def serve(requests: int, answers: int, runner: CaseRunner, case_seconds: float | None) -> None:
     """Carry out chunks until the driver closes the pipe."""
+    is_over = ends_with_parent()
+    with os.fdopen(requests, "rb") as lines:
+        for line in lines:
+            carry_out_chunk(json.loads(line), answers, runner, case_seconds, is_over)
+
+
+def ends_with_parent() -> Callable[[], str | None]:
+    """What a case asks time and again, where the system does not end a worker with its parent."""
     parent = os.getppid()
 
     def is_over() -> str | None:
@@ -120,17 +132,27 @@ def serve(requests: int, answers: int, runner: CaseRunner, case_seconds: float |
             os._exit(1)
         return None
 
+    return is_over
+
+
+def carry_out_chunk(
+    chunk: dict[str, Any], answers: int, runner: CaseRunner, case_seconds: float | None,
+    is_over: Callable[[], str | None],
+) -> None:
+    """Carry out one chunk; where it says `within`, no case is begun after so many seconds."""
+    started = time.monotonic()
+    within = chunk.get("within", math.inf)
+    n_cases = 0
     # what is many cases inside a case runs right there
-    with means.using(means.Means(jobs=0)), os.fdopen(requests, "rb") as lines:
-        for line in lines:
-            started = time.monotonic()
-            n_cases = 0
-            for number, packed in json.loads(line)["cases"]:
-                n_cases += 1
-                case = runner.case(number, packed)
-                result = limited(runner, case, case_seconds, is_over)
-                write_line(answers, {"k": number, "result": result})
-            write_line(answers, {"end": (time.monotonic() - started) / max(1, n_cases)})
+    with means.using(means.Means(jobs=0)):
+        for number, packed in chunk["cases"]:
+            if n_cases and time.monotonic() - started > within:
+                break
+            n_cases += 1
+            case = runner.case(number, packed)
+            result = limited(runner, case, case_seconds, is_over)
+            write_line(answers, {"k": number, "result": result})
+    write_line(answers, {"end": (time.monotonic() - started) / max(1, n_cases)})
 
 
 def write_line(to: int, content: Any) -> None:
@@ -396,8 +418,25 @@ class Source:
 
     def __init__(self, cases: Iterator[Case]) -> None:
         self._cases = cases
+        self._ahead: deque[Case] = deque()
         self._returned: list[Case] = []
         self._out: dict[int, None] = {}
+
+    def n_left(self, at_most: int) -> int:
+        """How many cases are left to give out, `at_most` when there are so many or more.
+
+        Also `at_most` when that takes too long to find out.
+        """
+        until = time.monotonic() + LOOKING_AHEAD
+        at_most = min(at_most, WINDOW)
+        while len(self._returned) + len(self._ahead) < at_most:
+            case = next(self._cases, None)
+            if case is None:
+                return len(self._returned) + len(self._ahead)
+            self._ahead.append(case)
+            if time.monotonic() > until:
+                break
+        return at_most
 
     def take(self, at_most: int) -> list[Case]:
         """The next cases; none when all are given out, or when the slowest must be awaited."""
@@ -418,7 +457,7 @@ class Source:
             newest = next(reversed(self._out))
             if newest - next(iter(self._out)) > WINDOW:
                 return None
-        return next(self._cases, None)
+        return self._ahead.popleft() if self._ahead else next(self._cases, None)
 
     def put_back(self, cases: list[Case]) -> None:
         """Cases that nobody has finished: they come next, in order."""

@@ -5,6 +5,7 @@ from __future__ import annotations
 import atexit
 import subprocess
 import sys
+import time
 from collections.abc import Callable
 
 from benchmarking import Case, Contender
@@ -15,6 +16,15 @@ from spanwright.session import Session
 
 def _said(conversation: Conversation, text: str) -> Callable[[], object]:
     return lambda: [reply.text for reply in conversation.say(text)]
+
+
+def _paused(conversation: Conversation, text: str) -> Callable[[], None]:
+    """The same, and as long as a quick reader takes: checkpoints are renewed meanwhile."""
+    def run() -> None:
+        list(conversation.say(text))
+        time.sleep(0.05)
+
+    return run
 
 
 def _conversation(*sentences: str) -> ProcessConversation:
@@ -50,17 +60,39 @@ def cases(is_quick: bool) -> list[Case]:
     large = _conversation("fix n = 3", *(f"let l{k} = list(1..{held})" for k in range(3)))
     here = LocalConversation(Session(n=3))
     claim = "claim x_1 x_2 = x_2 x_1"
-    # the same work, of a shape that is not known to be small
-    guarded = "claim x_1^1 x_2^(2-1) = x_2 x_1"
+    # a hundred in a row, so that the forks between them have their share
+    many, n_many = "; ".join([claim] * 100), 100
+    long = f"claim {' + '.join(['E_(0,1,2) - E_(0,1,2)'] * 600)} = 0"
     return [
         Case(
             name="checkpoint",
             what="a small claim, told to a session here and to one in an evaluator process",
             contenders=[
                 Contender("in this process", _said(here, claim)),
-                Contender("across, small by its tree", _said(small, claim)),
-                Contender("across, at a checkpoint", _said(small, guarded)),
-                Contender("the same, large session", _said(large, guarded)),
+                Contender("across", _said(small, claim)),
+                Contender("across, large session", _said(large, claim)),
+            ],
+        ),
+        Case(
+            name="checkpoint-many",
+            what="a hundred small claims in one text",
+            contenders=[
+                Contender("in this process", _said(here, many)),
+                Contender("across", _said(small, many)),
+                Contender("across, large session", _said(large, many)),
+            ],
+            n_units=n_many, unit="sentence",
+        ),
+        Case(
+            name="checkpoint-renewed",
+            what="a small claim behind a sentence of 0.1 s and more: a fresh checkpoint",
+            contenders=[
+                Contender("in this process", _said(here, claim), _said(here, long)),
+                Contender("across, at once", _said(small, claim), _said(small, long)),
+                Contender("across, after a pause", _said(small, claim), _paused(small, long)),
+                Contender(
+                    "across, large session, after a pause", _said(large, claim),
+                    _paused(large, long)),
             ],
         ),
         Case(

@@ -3,20 +3,24 @@
 from __future__ import annotations
 
 import atexit
+import os
+import signal
 import socket
 import subprocess
 import sys
 import time
 from collections.abc import Callable
+from functools import cache
 from importlib.util import find_spec
 from typing import Any
 
-from benchmarking import Case
+from benchmarking import Case, Contender
 from spanwright import means
 from spanwright.claims import at_random_point
 from spanwright.context import Context
 from spanwright.evaluator import Evaluator
 from spanwright.kernel import indices
+from spanwright.process import ProcessConversation
 from spanwright.session import Session
 from spanwright.settings import Settings
 from spanwright_grammar import syntax
@@ -56,24 +60,72 @@ def _claims(largest: int) -> list[syntax.Comparison]:
     return found
 
 
-def _local_cluster() -> str:
-    """A scheduler and two workers on loopback, ended with this process; its address."""
-    with socket.socket() as free:
-        free.bind(("127.0.0.1", 0))
-        address = f"tcp://127.0.0.1:{free.getsockname()[1]}"
+class _Sides:
+    """A session with a pool of two, and one with a scheduler and two workers, on loopback.
 
-    def start(module: str, *arguments: str) -> None:
-        process = subprocess.Popen(
-            [sys.executable, "-m", f"distributed.cli.{module}", *arguments, "--no-dashboard"],
-            stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
-        atexit.register(process.kill)
+    Everything is started once and ends with this process. Before each turn the workers'
+    evaluators are started anew, for a pool's workers have no memories of earlier turns either.
+    """
 
-    start("dask_scheduler", "--host", "127.0.0.1", "--port", address.rpartition(":")[2])
-    time.sleep(5.0)
-    for _ in range(2):
-        start("dask_worker", address, "--nthreads", "1", "--no-nanny")
-    time.sleep(5.0)
-    return address
+    def __init__(self) -> None:
+        with socket.socket() as free:
+            free.bind(("127.0.0.1", 0))
+            address = f"tcp://127.0.0.1:{free.getsockname()[1]}"
+        _start("dask_scheduler", "--host", "127.0.0.1", "--port", address.rpartition(":")[2])
+        time.sleep(5.0)
+        self._workers = [
+            _start("dask_worker", address, "--nthreads", "1", "--no-nanny") for _ in range(2)]
+        time.sleep(5.0)
+        self._sessions = {
+            "pool": ProcessConversation(means={"jobs": 2}),
+            "cluster": ProcessConversation(means={"cluster": address})}
+        for session in self._sessions.values():
+            atexit.register(session.close)
+            list(session.say(f"fix n = {N}"))
+
+    def said(self, side: str, text: str) -> str:
+        """What a session answers."""
+        return [reply.text for reply in self._sessions[side].say(text)][-1]
+
+    def make_ready(self, side: str) -> None:
+        """A small run, so that all that a sweep needs runs already, without its memories."""
+        if side == "cluster":
+            for worker in self._workers:
+                listed = subprocess.run(["ps", "-o", "pid=", "--ppid", str(worker.pid)],
+                                        capture_output=True, text=True, check=False)
+                for process in listed.stdout.split():
+                    os.kill(int(process), signal.SIGKILL)
+        self.said(side, "for i in 1..100: claim i = i")
+
+
+def _start(module: str, *arguments: str) -> subprocess.Popen[bytes]:
+    process = subprocess.Popen(
+        [sys.executable, "-m", f"distributed.cli.{module}", *arguments, "--no-dashboard"],
+        stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
+    atexit.register(process.kill)
+    return process
+
+
+@cache
+def _sides() -> _Sides:
+    return _Sides()
+
+
+def _cluster_case() -> Case:
+    # twice as long as the claim for two workers: starts and tails are to weigh as they do
+    text = SWEEP.format(6).replace("compositions(k)", "compositions(k), i in 1..2").replace(
+        "x_1", "x_i")
+
+    def contender(label: str, side: str) -> Contender:
+        return Contender(label, lambda: _sides().said(side, text),
+                         prepare=lambda: _sides().make_ready(side))
+
+    return Case(
+        name="cluster",
+        what="a sentence in a running session, by its local pool and by a local scheduler: pool "
+             "workers are forked in the time; client, workers and their evaluators run before",
+        contenders=[contender("pool of 2", "pool"), contender("cluster of 2", "cluster")],
+        answer=lambda text: text)
 
 
 def cases(is_quick: bool) -> list[Case]:
@@ -103,15 +155,5 @@ def cases(is_quick: bool) -> list[Case]:
             n_units=n_trivial, unit="case"),
     ]
     if not is_quick and find_spec("distributed") is not None:
-        address: list[str] = []
-
-        def on_cluster() -> object:
-            if not address:
-                address.append(_local_cluster())
-            return _sweep(sweep, N, cluster=address[0])()
-
-        found.append(Case(
-            name="cluster", what="the same claim, by the local pool and by a local scheduler",
-            contenders=[("pool of 2", _sweep(sweep, N, jobs=2)), ("cluster of 2", on_cluster)],
-            answer=lambda tally: tally))
+        found.append(_cluster_case())
     return found

@@ -37,13 +37,13 @@ class Reading:
 def reading(conversation: ProcessConversation, milliseconds: float) -> Reading:
     """What the evaluator takes now, once those that ended are gone."""
     until = time.monotonic() + 10
-    while len(processes := group(conversation.process_id)) != 2:
+    while len(processes := group(conversation.process_id)) != 3:
         if time.monotonic() > until:
-            raise Fault(f"{len(processes)} processes where there should be 2")
+            raise Fault(f"{len(processes)} processes where there should be 3")
         time.sleep(0.01)
-    holder = psutil.Process(max(processes, key=lambda pid: psutil.Process(pid).create_time()))
+    session = psutil.Process(max(processes, key=lambda pid: psutil.Process(pid).create_time()))
     return Reading(
-        holder.memory_info().rss, len(processes), holder.num_fds(), milliseconds)
+        session.memory_info().rss, len(processes), session.num_fds(), milliseconds)
 
 
 def run_many(n_sentences: int, n_readings: int = 10) -> list[Reading]:

@@ -133,7 +133,7 @@ def _check(conversation: ProcessConversation, last: int) -> None:
         raise Fault(f"lost: {', '.join(sorted(missing))}")
     if {"early", "late"} & set(conversation.state().names):
         raise Fault("half of a used script is there")
-    _wait_for(lambda: len(group(conversation.process_id)) == 2, "processes are left behind")
+    _wait_for(lambda: len(group(conversation.process_id)) == 3, "processes are left behind")
 
 
 def _wait_for(is_so: object, otherwise: str) -> None:

@@ -9,6 +9,7 @@ from __future__ import annotations
 import contextlib
 import json
 import os
+import random
 import resource
 import signal
 import subprocess
@@ -60,7 +61,7 @@ def group(leader: int) -> dict[int, int]:
 
 
 def chain(leader: int) -> list[int]:
-    """First process, holder, and the child when a sentence runs."""
+    """First process, keeper and session."""
     parents = group(leader)
     found = [leader]
     while below := [pid for pid, parent in parents.items() if parent == found[-1]]:
@@ -68,15 +69,24 @@ def chain(leader: int) -> list[int]:
     return found
 
 
-def is_at_work(leader: int) -> bool:
-    """Whether a child computes: one that has become the holder has used no time yet."""
-    found = chain(leader)
-    return len(found) == 3 and psutil.Process(found[2]).cpu_times().user >= 0.1
+def at_work(leader: int) -> Callable[[], bool]:
+    """Whether the session has computed for a while since this was called."""
+    before: dict[int, float] = {}
+
+    def is_so() -> bool:
+        found = chain(leader)
+        if len(found) != 3:
+            return False
+        used = psutil.Process(found[2]).cpu_times().user
+        return used - before.setdefault(found[2], used) >= 0.1
+
+    is_so()
+    return is_so
 
 
 def is_settled(leader: int) -> bool:
-    """Whether the first process and the holder are all that there is."""
-    return len(group(leader)) == 2
+    """Whether first process, keeper and session are all that there is."""
+    return len(group(leader)) == 3
 
 
 @contextlib.contextmanager
@@ -107,10 +117,10 @@ def said(conversation: ProcessConversation, text: str) -> Reply:
 
 def when_running(conversation: ProcessConversation, action: Callable[[], object]) -> Reply:
     """Act as soon as a child is at work on an endless sentence; the sentence's reply."""
-    leader = conversation.process_id
+    is_working = at_work(conversation.process_id)
 
     def act() -> None:
-        wait_for(lambda: is_at_work(leader))
+        wait_for(is_working)
         action()
 
     thread = threading.Thread(target=act)
@@ -287,7 +297,7 @@ def test_memory_twenty_times() -> None:
                  "fix memory = 64 MB", "fix terms = 100000000") as conversation:
         def memory() -> int:
             wait_for(lambda: is_settled(conversation.process_id))
-            return int(psutil.Process(chain(conversation.process_id)[1]).memory_info().rss)
+            return int(psutil.Process(chain(conversation.process_id)[2]).memory_info().rss)
 
         before = memory()
         for _ in range(20):
@@ -339,6 +349,74 @@ def test_what_cannot_fit_is_refused_at_once(calm: ProcessConversation, sentence:
     assert "would have about" in reply.messages[0] or "a list of" in reply.messages[0]
 
 
+# --- checkpoints ----------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3])
+def test_stops_anywhere_leave_the_session_of_one_that_never_met_them(seed: int) -> None:
+    """Texts of several sentences, right ones and wrong ones, some stopped in the middle."""
+    chance = random.Random(seed)
+    sentences = [
+        "let kept = kept + x_1", "kept", "x_9", "let f(a) = a + kept; f(2)", "1 +", "eq_1 + 1",
+        "fix n = 3", "claim 1 = 2", "expand (x_1 + x_2 + x_3 + 1)^4 in E", "let g = E_(0,1,2)",
+        "remark \"so\"", "forget eq_2; recall", "(x_1 + x_2 + 1)^40 (x_1 - x_2 + 2)^12; 5"]
+    here = LocalConversation(Session())
+    beginning = "fix n = 3; let u be a parameter; let v be a parameter; let kept = x_2; 7; 8"
+    with talking() as there:
+        for conversation in (here, there):
+            list(conversation.say(beginning))
+        for _ in range(12):
+            text = "\n".join(chance.choices(sentences, k=chance.randint(1, 5)))
+            replies = list(there.say(text))
+            expected = list(here.say(text))
+            assert [(r.sentence, r.status, r.tag, r.text, r.messages) for r in replies] == [
+                (r.sentence, r.status, r.tag, r.text, r.messages) for r in expected]
+            if chance.random() < 0.5:
+                before = chance.choice(sentences[:5])
+                timer = threading.Timer(chance.uniform(0.1, 0.4), there.stop)
+                timer.start()
+                replies = list(there.say(f"{before}\n{ENDLESS}\nlet late = 1"))
+                timer.join()
+                assert replies[-1].record["code"] == "stopped"
+                # as many sentences, none of which leaves anything
+                list(here.say(before))
+                list(here.say("x_9\n" * (replies[-1].sentence - expected[-1].sentence - len(
+                    list(LocalConversation(Session()).say(before))))))
+            assert there.state() == here.state()
+
+
+def test_a_file_is_not_written_again_when_the_next_sentence_is_stopped(tmp_path: Path) -> None:
+    with talking(tmp_path, "fix n = 2", "let u be a parameter", "let v be a parameter",
+                 'let kept = x_1 + 2; write kept as text to "kept.txt"') as conversation:
+        (tmp_path / "kept.txt").write_text("mine\n")
+        assert when_running(conversation, conversation.stop).record["code"] == "stopped"
+        assert (tmp_path / "kept.txt").read_text() == "mine\n"
+        assert holds_what_it_held(conversation)
+
+
+def test_a_session_whose_keeper_was_killed_gets_another() -> None:
+    with talking(None, "fix n = 3", "let kept = x_1 + 2", "let u be a parameter",
+                 "let v be a parameter") as conversation:
+        leader, keeper, session = chain(conversation.process_id)
+        os.kill(keeper, signal.SIGKILL)
+        wait_for(lambda: keeper not in group(leader))
+        assert said(conversation, "kept").text == "x_1 + 2"
+        wait_for(lambda: is_settled(leader))
+        assert conversation.process_id == leader and session in chain(leader)
+        assert when_running(conversation, conversation.stop).record["code"] == "stopped"
+        assert holds_what_it_held(conversation)
+
+
+def test_one_checkpoint_serves_many_small_sentences() -> None:
+    with talking(None, "fix n = 3") as conversation:
+        seen = set()
+        for k in range(60):
+            assert said(conversation, f"let a = {k} x_1").status == "ok"
+            seen.add(chain(conversation.process_id)[1])
+        assert len(seen) < 30
+        assert said(conversation, "a").text == "59 x_1"
+
+
 # --- loss and repair ------------------------------------------------------------------------------
 
 
@@ -375,11 +453,12 @@ def test_a_text_goes_on_behind_the_sentence_that_was_lost() -> None:
         leader = conversation.process_id
 
         def kill() -> None:
-            wait_for(lambda: is_at_work(leader))
+            wait_for(is_working)
             os.kill(chain(leader)[1], signal.SIGKILL)
 
         replies = conversation.say(f"let kept = x_1 + 2\n{ENDLESS}\nkept")
         assert next(replies).status == "ok"
+        is_working = at_work(leader)
         thread = threading.Thread(target=kill)
         thread.start()
         rest = list(replies)
@@ -402,7 +481,8 @@ def test_an_evaluator_that_does_not_answer_is_replaced(monkeypatch: pytest.Monke
         first = conversation.process_id
 
         def freeze() -> None:
-            os.kill(chain(first)[1], signal.SIGSTOP)
+            for process in chain(first)[1:]:
+                os.kill(process, signal.SIGSTOP)
             conversation.stop()
 
         assert when_running(conversation, freeze).record["code"] == "stopped"
@@ -432,7 +512,7 @@ def test_nothing_outlives_a_front_end_that_is_killed(is_running: bool) -> None:
     assert front.stdout is not None
     leader = int(front.stdout.readline())
     if is_running:
-        wait_for(lambda: is_at_work(leader))
+        wait_for(at_work(leader))
     else:
         assert front.stdout.readline() == "done\n"
     front.kill()
@@ -446,9 +526,9 @@ def test_nothing_outlives_a_front_end_that_is_killed(is_running: bool) -> None:
 def test_many_sentences_leave_memory_and_processes_as_they_were() -> None:
     text = "x_1 E_(0,1) - x_1 E_(0,1); forget eq_1; claim 2 = 2"
     with talking(None, "fix n = 2") as conversation:
-        def holder() -> psutil.Process:
+        def session() -> psutil.Process:
             wait_for(lambda: is_settled(conversation.process_id))
-            return psutil.Process(chain(conversation.process_id)[1])
+            return psutil.Process(chain(conversation.process_id)[2])
 
         def repeat(times: int) -> None:
             for _ in range(times):
@@ -457,10 +537,10 @@ def test_many_sentences_leave_memory_and_processes_as_they_were() -> None:
                     assert reply.status == "ok"
 
         repeat(20)
-        before, n_files = holder().memory_info().rss, holder().num_fds()
+        before, n_files = session().memory_info().rss, session().num_fds()
         repeat(100)
-        assert holder().num_fds() == n_files
-        assert holder().memory_info().rss < 1.1 * before + 2**20
+        assert session().num_fds() == n_files
+        assert session().memory_info().rss < 1.1 * before + 2**20
 
 
 # --- scripts that use scripts ---------------------------------------------------------------------
