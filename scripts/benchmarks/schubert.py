@@ -7,7 +7,8 @@ from random import Random
 from typing import Any
 
 from benchmarking import Case, Contender
-from spanwright.kernel.families import grothendieck, schubert
+from spanwright.kernel.families import grothendieck, schubert, schubert_products
+from spanwright.kernel.families.packed import multiplied
 from spanwright.kernel.indices import code, from_code, padded, permutations, reduced_size, trimmed
 
 Permutation = tuple[int, ...]
@@ -94,6 +95,19 @@ def _forget() -> None:
     grothendieck.forget_polynomials()
 
 
+def _leave_smaller(chosen: list[tuple[Permutation, Permutation]]) -> None:
+    """As after a while of such products: smaller ones are remembered, these are not."""
+    known = schubert_products._memory.products
+    for u, v in chosen:
+        schubert.multiply(u, v)
+    for u, v in chosen:
+        known.pop(tuple(sorted(map(schubert_products.key_of, (u, v)))), None)
+
+
+def _by_monomials(u: Permutation, v: Permutation) -> dict[Permutation, int]:
+    return schubert.from_packed(multiplied(schubert.polynomial(u), schubert.polynomial(v)))
+
+
 def _product_case(name: str, what: str, chosen: list[tuple[Permutation, Permutation]]) -> Case:
     # the divided differences from x^delta pass through as many variables as w has entries
     size = max(len(w) for u, v in chosen for w in schubert.multiply(u, v))
@@ -106,9 +120,12 @@ def _product_case(name: str, what: str, chosen: list[tuple[Permutation, Permutat
         name=name,
         what=what,
         contenders=[
-            Contender("ours", products(schubert.multiply)),
-            Contender("ours, nothing remembered", products(schubert.multiply), prepare=_forget),
-            Contender("ours, by rows", products(schubert.multiply_by_rows)),
+            Contender(
+                "ours, in a session", products(schubert.multiply),
+                prepare=lambda: _leave_smaller(chosen)),
+            Contender("ours, from nothing", products(schubert.multiply), prepare=_forget),
+            Contender("ours, by monomials", products(_by_monomials), prepare=_forget),
+            Contender("ours, by monomials, S_w remembered", products(_by_monomials)),
             Contender("sympy, S_w by definition", products(defined.product)),
             Contender("sympy, helped", products(helped.product), prepare=helped.forget),
             Contender("sympy, helped, S_w remembered", products(helped.product)),

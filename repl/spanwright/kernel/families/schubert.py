@@ -13,8 +13,6 @@ from dataclasses import dataclass
 from functools import lru_cache
 from typing import Any
 
-from flint import Ordering, fmpz_mpoly, fmpz_mpoly_ctx
-
 from spanwright.kernel import budget
 from spanwright.kernel.errors import OutsideDomain
 from spanwright.kernel.families.base import Coefficients, Family, Index, shown
@@ -30,12 +28,10 @@ from spanwright.kernel.families.packed import (
     by_leaders,
     digits,
     from_laurent,
-    multiplied,
-    pack,
     scalar,
     to_laurent,
-    unpack,
 )
+from spanwright.kernel.families.schubert_products import forget_products, multiply_by_rows
 from spanwright.kernel.indices import (
     Permutation,
     code,
@@ -50,7 +46,6 @@ from spanwright.kernel.indices import (
     trimmed,
 )
 from spanwright.kernel.laurent import LaurentPolynomial
-from spanwright.kernel.parameters import Exponents
 
 Integers = dict[Permutation, int]
 """A sum of basis elements with integer coefficients."""
@@ -106,7 +101,6 @@ class _Memory:
         self.by_index: dict[Permutation, dict[int, int]] = {}
         self.by_leader: dict[int, dict[int, int]] = {}
         self.indices: dict[int, Permutation] = {}
-        self.dense: dict[int, dict[Exponents, tuple[Permutation, fmpz_mpoly]]] = {}
         self.n_monomials = 0
 
     def make_room(self) -> None:
@@ -118,7 +112,6 @@ class _Memory:
         self.by_index.clear()
         self.by_leader.clear()
         self.indices.clear()
-        self.dense.clear()
         self.n_monomials = 0
 
 
@@ -126,8 +119,9 @@ _memory = _Memory()
 
 
 def forget_polynomials() -> None:
-    """Drop the remembered S_w: for measurements and for memory."""
+    """Drop the remembered S_w and products: for measurements and for memory."""
     _memory.forget()
+    forget_products()
 
 
 def first_rows(
@@ -356,53 +350,14 @@ def transition(w: Permutation) -> Transition:
     return Transition(r, s, v, tuple(upward_into(v, r)))
 
 
-# Above this many products of two monomials flint's polynomials beat dictionaries, above the
-# second number the route by rows, which needs no S_w in monomials, beats both (measured).
-FLINT_PRODUCTS = 300
-MONOMIAL_PRODUCTS = 100_000
-
-
 def multiply(u: Permutation, v: Permutation) -> Integers:
-    """S_u S_v: Pieri's rule where it applies, else by monomials, or by rows when they are many."""
+    """S_u S_v: Pieri's rule where it applies, else by first rows."""
     for first, second in ((u, v), (v, u)):
         found = as_pieri(first)
         if found is not None:
             kind, r, k = found
             return pieri_e(second, r, k) if kind == "e" else pieri_h(second, r, k)
-    a, b = polynomial(u), polynomial(v)
-    n_products = len(a) * len(b)
-    if n_products > MONOMIAL_PRODUCTS:
-        return multiply_by_rows(u, v)
-    if n_products > FLINT_PRODUCTS:
-        return _multiply_by_flint(a, b, max(n_variables(u), n_variables(v)))
-    return from_packed(multiplied(a, b))
-
-
-def _multiply_by_flint(a: Mapping[int, int], b: Mapping[int, int], n: int) -> Integers:
-    """Multiply out and subtract leaders; the last variable comes first, as in packed keys."""
-    context = fmpz_mpoly_ctx.get(tuple(f"x{k}" for k in range(n, 0, -1)), Ordering.lex)
-
-    def dense(terms: Mapping[int, int]) -> fmpz_mpoly:
-        return context.from_dict({unpack(key, n)[::-1]: c for key, c in terms.items()})
-
-    left = dense(a) * dense(b)
-    _memory.make_room()
-    known = _memory.dense.setdefault(n, {})
-    found: Integers = {}
-    limits = budget.current()
-    while left:
-        leader = tuple(map(int, left.monomial(0)))
-        element = known.get(leader)
-        if element is None:
-            key = pack(leader[::-1])
-            element = known[leader] = with_code(key), dense(_with_leader(key))
-            _memory.n_monomials += len(element[1])
-        w, polynomial_of_w = element
-        c = left.coefficient(0)
-        found[w] = int(c)
-        left = left - (polynomial_of_w if c == 1 else polynomial_of_w * c)
-        limits.check_terms(len(found), "this product")
-    return found
+    return multiply_by_rows(u, v)
 
 
 @lru_cache(maxsize=100_000)
@@ -414,20 +369,6 @@ def as_pieri(w: Permutation) -> tuple[str, int, int] | None:
     if parts == {1} and all(c[first:]):
         return "e", r, r - first
     return ("h", r, c[-1]) if c and first == r - 1 else None
-
-
-def multiply_by_rows(u: Permutation, v: Permutation) -> Integers:
-    """S_u S_v: S_u row by row, S_u = sum x_1^p S_u'(x_2, ...), acting on S_v by the x_r rule.
-
-    Every partial product S_u'(x_r, x_(r+1), ...) S_v is found once, the powers of x_r by Horner.
-    """
-    if length(u) > length(v):
-        u, v = v, u
-    top, levels = row_levels(u)
-    known: dict[Permutation, Integers] = {}
-    for r in range(len(levels), 0, -1):
-        known = {w: _row_by_row(rows, r, known, v) for w, rows in levels[r - 1].items()}
-    return known[top]
 
 
 Rows = list[tuple[tuple[int, ...], int, Permutation]]
@@ -442,37 +383,6 @@ def row_levels(u: Permutation) -> tuple[Permutation, list[dict[Permutation, Rows
         levels.append({w: list(first_rows(w)) for w in sorted(level)})
         level = {below for rows in levels[-1].values() for _, _, below in rows}
     return top, levels
-
-
-def _row_by_row(
-    rows: Rows, r: int, known: Mapping[Permutation, Integers], v: Permutation
-) -> Integers:
-    if not rows:
-        return {v: 1}
-    by_power: dict[int, list[Integers]] = {}
-    for letters, _, below in rows:
-        by_power.setdefault(len(letters), []).append(known[below])
-    found: Integers = {}
-    for power in range(max(by_power), -1, -1):
-        found = dict(found)
-        for summand in by_power.get(power, ()):
-            for w, c in summand.items():
-                found[w] = found.get(w, 0) + c
-        if power:
-            found = _times_generator(found, r)
-    return {w: c for w, c in found.items() if c}
-
-
-def _times_generator(terms: Integers, r: int) -> Integers:
-    found: Integers = {}
-    for w, c in terms.items():
-        if c:
-            for v in upward_from(w, r):
-                found[v] = found.get(v, 0) + c
-            for v in upward_into(w, r):
-                found[v] = found.get(v, 0) - c
-    budget.current().check_terms(len(found), "this product")
-    return found
 
 
 # operators
@@ -608,9 +518,10 @@ def product_derivation(u: Permutation, v: Permutation) -> Derivation:
         Row((), w, integer(c)) for w, c in sorted(multiply(u, v).items()))
     return Derivation(
         "Product of Schubert polynomials",
-        "S_u S_v: the pipe dreams of S_u, row by row, act on S_v by Monk's rule for x_r",
-        "Monk, The geometry of flag manifolds (1959); Fomin and Kirillov, The Yang-Baxter "
-        "equation, symmetric functions, and Schubert polynomials (1996)", rows)
+        "S_w = sum of x_1^p S_v(x_2, x_3, ...) over first rows of pipe dreams, for both factors; "
+        "the products of what is left are gathered from the lowest power of x_1 up",
+        "Fomin and Kirillov, The Yang-Baxter equation, symmetric functions, and Schubert "
+        "polynomials (1996)", rows)
 
 
 # the family
