@@ -86,6 +86,15 @@ def test_values_at_a_rational_point(f: LaurentPolynomial, g: LaurentPolynomial) 
 
 
 @settings(max_examples=effort(40))
+@given(POLYNOMIALS, scalars())
+def test_equal_coefficients_are_one_object(f: LaurentPolynomial, c: Scalar) -> None:
+    f = f + LaurentPolynomial.of_scalars(N, RING, {(k,) * N: c for k in range(3)})
+    found = dict(f.items())
+    assert found == {e: f.coefficient(e) for e in f.terms}
+    assert len({id(c) for c in found.values()}) == len(
+        {f.terms[e].repr() for e in f.terms})
+
+
 @given(POLYNOMIALS, nonzero_scalars())
 def test_the_form_is_canonical(f: LaurentPolynomial, c: Scalar) -> None:
     """Terms jointly primitive over a denominator that no common factor divides."""

@@ -8,7 +8,7 @@ and cancelling is trial division: no general gcd is ever taken. Products of bino
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from fractions import Fraction
 
 from flint import fmpq, fmpz, fmpz_mpoly
@@ -392,7 +392,9 @@ def _cancel(
     """Divide `rest` by factors of the denominator that are not its own; `factors` is changed."""
     value = probe(rest)
     for factor, exponent in list(factors.items()):
-        if exponent >= 0 or own.get(factor, 0) < 0:
+        if exponent >= 0 or (value and factor.probe and value % factor.probe):
+            continue
+        if own.get(factor, 0) < 0:
             continue
         rest, n_times, value = divide_out(rest, factor, -exponent, value)
         if n_times == -exponent:
@@ -400,6 +402,24 @@ def _cancel(
         elif n_times:
             factors[factor] = exponent + n_times
     return rest
+
+
+def multiples(
+    ring: ParameterRing, polynomials: Iterable[fmpz_mpoly], scale: Scalar
+) -> Iterator[Scalar]:
+    """Nonzero polynomials in the parameters times one scale; equal ones give one object.
+
+    Of the coefficients of a polynomial with some symmetry many are equal.
+    """
+    seen: dict[tuple[int, int], list[tuple[fmpz_mpoly, Scalar]]] = {}
+    for polynomial in polynomials:
+        n_terms = len(polynomial)
+        alike = seen.setdefault((n_terms, int(polynomial.coefficient(n_terms // 2))), [])
+        found = next((scalar for known, scalar in alike if known == polynomial), None)
+        if found is None:
+            found = Scalar.of_polynomial(ring, polynomial) * scale
+            alike.append((polynomial, found))
+        yield found
 
 
 def total(scalars: Iterable[Scalar], ring: ParameterRing | None = None) -> Scalar:

@@ -15,7 +15,13 @@ from flint import Ordering, fmpq, fmpz, fmpz_mpoly, fmpz_mpoly_ctx
 from flint.utils.flint_exceptions import DomainError
 
 from spanwright.kernel import budget
-from spanwright.kernel.coefficients import Scalar, common_denominator, polynomial_of, total
+from spanwright.kernel.coefficients import (
+    Scalar,
+    common_denominator,
+    multiples,
+    polynomial_of,
+    total,
+)
 from spanwright.kernel.errors import DivisionByZero, Mixed, NotAUnit, Pole
 from spanwright.kernel.factors import Factor
 from spanwright.kernel.parameters import Exponents, ParameterRing, monomials
@@ -65,17 +71,7 @@ class LaurentPolynomial:
             terms = {e: c * top for e, c in terms.items()}
         factors = {f: e for f, e in scale.factors.items() if e < 0}
         terms = _divided_by_common(terms, factors, suspects)
-        content = fmpz(0)
-        low: Exponents | None = None
-        for c in terms.values():
-            if content != 1:
-                content = content.gcd(c.content())  # type: ignore[attr-defined]
-            if low is None or any(low):
-                own = tuple(map(int, c.term_content().monomial(0)))
-                low = own if low is None else tuple(map(min, low, own))
-            elif content == 1:
-                break
-        assert low is not None
+        content, low = _common_part(ring, terms)
         lead = terms[max(terms)]
         if lead.coefficient(len(lead) - 1) < 0:
             content = -content
@@ -166,8 +162,9 @@ class LaurentPolynomial:
 
     def items(self) -> Iterator[tuple[Exponents, Scalar]]:
         """Exponents and coefficients, in the order in which they are shown."""
-        for e in self.support():
-            yield e, self.coefficient(e)
+        support = self.support()
+        terms = map(self.terms.__getitem__, support)
+        return zip(support, multiples(self.ring, terms, self.scale), strict=True)
 
     def as_scalar(self) -> Scalar | None:
         """The scalar, or None when some x_i occurs."""
@@ -376,6 +373,27 @@ class LaurentPolynomial:
                     term = term * pow(xs[j], power, point.prime) % point.prime
             value += term
         return value * point.value(self.scale) % point.prime
+
+
+def _common_part(ring: ParameterRing, terms: Terms) -> tuple[fmpz, Exponents]:
+    """The positive integer and the monomial that divide all terms."""
+    content = fmpz(0)
+    for c in terms.values():
+        content = content.gcd(c.content())  # type: ignore[attr-defined]
+        if content == 1:
+            break
+    # most polynomials have a term with a constant part, which comes last
+    for c in terms.values():
+        if not any(c.monomial(len(c) - 1)):
+            return content, ring.nil
+    low: Exponents | None = None
+    for c in terms.values():
+        own = tuple(map(int, c.term_content().monomial(0)))
+        low = own if low is None else tuple(map(min, low, own))
+        if not any(low):
+            break
+    assert low is not None
+    return content, low
 
 
 def _divided_by_common(

@@ -50,11 +50,12 @@ class ProductForm:
 class PolynomialForm:
     """A parameter polynomial laid out for reading: its terms in printing order."""
 
-    __slots__ = ("_polynomial", "ring")
+    __slots__ = ("_hash", "_polynomial", "ring")
 
     def __init__(self, ring: ParameterRing, polynomial: fmpz_mpoly) -> None:
         self.ring = ring
         self._polynomial = polynomial
+        self._hash: int | None = None
 
     def __len__(self) -> int:
         return len(self._polynomial)
@@ -67,7 +68,10 @@ class PolynomialForm:
         return list(self.terms()) == list(other.terms())
 
     def __hash__(self) -> int:
-        return hash((len(self._polynomial), int(self._polynomial.coefficient(0))))
+        # asked for with every coefficient that has this factor
+        if self._hash is None:
+            self._hash = hash((len(self._polynomial), int(self._polynomial.coefficient(0))))
+        return self._hash
 
     def __repr__(self) -> str:
         return f"PolynomialForm({self._polynomial})"
@@ -80,16 +84,16 @@ class PolynomialForm:
         ):
             yield int(c), powers(self.ring, exponents)
 
-    def words(self) -> list[str]:
-        """Signs and terms in turn, as flint writes them (3*t^2*q), the constant term first.
+    def words(self) -> tuple[list[str], list[str]]:
+        """Signs, and terms as flint writes them (3*t^2*q), the constant term first.
 
         Much quicker than `terms`; `powers_of_word` reads the monomials.
         """
         text = str(self._polynomial)
-        words = (f"- {text[1:]}" if text[0] == "-" else f"+ {text}").split(" ")
-        words.reverse()
-        words[0::2], words[1::2] = words[1::2], words[0::2]
-        return words
+        words = text[1:].split(" ") if text[0] == "-" else text.split(" ")
+        signs = words[-2::-2]
+        signs.append("-" if text[0] == "-" else "+")
+        return signs, words[::-2]
 
 
 def powers(ring: ParameterRing, exponents: Exponents) -> Powers:
@@ -187,33 +191,42 @@ def _grouped(
 def _grouped_once(
     ring: ParameterRing, factors: frozenset[tuple[Factor, int]]
 ) -> tuple[tuple[PolynomialForm, int], ...]:
-    rows: list[tuple[tuple[Any, ...], fmpz_mpoly, int]] = []
+    rows: list[tuple[_Row, int]] = []
     by_direction: dict[Exponents, dict[int, int]] = {}
     for factor, multiplicity in factors:
         if factor.order:
             by_direction.setdefault(factor.direction, {})[factor.order] = multiplicity
         else:
-            rows.append((factor.sort_key, factor.polynomial, multiplicity))
+            rows.append(((factor.sort_key, PolynomialForm(ring, factor.polynomial)), multiplicity))
     for direction, orders in by_direction.items():
         while orders:
             top = max(orders)
             divisors = [d for d in range(1, top + 1) if top % d == 0]
-            if all(d in orders for d in divisors):
-                multiplicity = min(orders[d] for d in divisors)
-                used = divisors
-                polynomial = ring.context.from_dict({
-                    tuple(max(-e, 0) * top for e in direction): 1,
-                    tuple(max(e, 0) * top for e in direction): -1})
-                if polynomial.coefficient(1) < 0:
-                    polynomial = -polynomial
-            else:
-                multiplicity, used = orders[top], [top]
-                polynomial = cyclotomic(ring, direction, top).polynomial
+            is_binomial = all(d in orders for d in divisors)
+            used = divisors if is_binomial else [top]
+            multiplicity = min(orders[d] for d in used)
             for d in used:
                 orders[d] -= multiplicity
                 if not orders[d]:
                     del orders[d]
-            rows.append(((int(polynomial.total_degree()), polynomial_key(polynomial)), polynomial,
-                         multiplicity))
-    rows.sort(key=lambda row: row[0])
-    return tuple((PolynomialForm(ring, p), m) for _, p, m in rows)
+            rows.append((_row(ring, direction, top, is_binomial), multiplicity))
+    rows.sort(key=lambda row: row[0][0])
+    return tuple((form, multiplicity) for (_, form), multiplicity in rows)
+
+
+_Row = tuple[tuple[Any, ...], PolynomialForm]
+"""What a factor is sorted by, and the factor."""
+
+
+@lru_cache(maxsize=5_000)
+def _row(ring: ParameterRing, direction: Exponents, order: int, is_binomial: bool) -> _Row:
+    """1 - m^order or Phi_order(m) for m of that direction, its last term positive."""
+    polynomial = cyclotomic(ring, direction, order).polynomial
+    if is_binomial:
+        polynomial = ring.context.from_dict({
+            tuple(max(-e, 0) * order for e in direction): 1,
+            tuple(max(e, 0) * order for e in direction): -1})
+        if polynomial.coefficient(1) < 0:
+            polynomial = -polynomial
+    key = (int(polynomial.total_degree()), polynomial_key(polynomial))
+    return key, PolynomialForm(ring, polynomial)

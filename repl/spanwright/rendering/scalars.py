@@ -29,9 +29,9 @@ GREEK = frozenset((
 ))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Style:
-    """The signs of one way of writing; the base is the language's own."""
+    """The signs of one way of writing, one object for each; the base is the language's own."""
 
     times: str = " "
     power: str = "^"
@@ -60,8 +60,10 @@ class Style:
 
     def polynomial(self, form: PolynomialForm) -> str:
         """A polynomial in the parameters, constant term first."""
-        words = form.words()
-        words[1::2] = map(_terms(self, form.ring).__getitem__, words[1::2])
+        signs, terms = form.words()
+        known = _terms(self, form.ring)
+        words = [""] * (2 * len(terms))
+        words[0::2], words[1::2] = signs, map(known.__getitem__, terms)
         text = " ".join(words)
         return text[2:] if text[0] == "+" else "-" + text[2:]
 
@@ -74,17 +76,17 @@ class _Terms(dict[str, str]):
         self._style = style
         self._ring = ring
 
-    def __missing__(self, word: str) -> str:
+    def __missing__(self, term: str) -> str:
         style = self._style
-        if word[0] <= "9":  # a digit; names begin with letters
-            digits, star, monomial = word.partition("*")
-            shown = f"{digits}{style.times}{self[monomial]}" if star else digits
+        if term[0] <= "9":  # a digit; names begin with letters
+            number, star, monomial = term.partition("*")
+            shown = number + style.times + self[monomial] if star else number
         else:
-            shown = style.times.join(
-                style.raised(style.name(n), e) for n, e in powers_of_word(self._ring, word))
+            shown = style.times.join([
+                style.raised(style.name(n), e) for n, e in powers_of_word(self._ring, term)])
         if len(self) >= REMEMBERED_TERMS:
             self.clear()
-        self[word] = shown
+        self[term] = shown
         return shown
 
 

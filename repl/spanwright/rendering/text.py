@@ -114,25 +114,28 @@ def term_pieces(
 ) -> list[Piece]:
     """The terms of a polynomial or expansion in the order in which they are shown."""
     pieces: list[Piece] = []
-    if isinstance(value, LaurentPolynomial):
-        for exponents, c in value.items():
-            pieces.append(term_piece(c, monomial_text(exponents, style), style, show))
-    else:
-        for index, c in value.items():
-            shown = value.family.show_index(index, value.n)
-            pieces.append(term_piece(c, element_text(value.family.sign, shown), style, show))
+    # equal coefficients are one object, and set once; kept here, for ids are used again
+    shown: dict[int, tuple[Scalar, str]] = {}
+    for index, c in value.items():
+        if isinstance(value, LaurentPolynomial):
+            element = monomial_text(index, style)
+        else:
+            element = element_text(value.family.sign, value.family.show_index(index, value.n))
+        if not element:
+            pieces.append(_piece(scalar_text(c, style, show), element))
+            continue
+        if id(c) not in shown:
+            shown[id(c)] = c, scalar_text(c, style, show, as_factor=True)
+        pieces.append(_piece(shown[id(c)][1], element))
     return pieces
 
 
-def term_piece(c: Scalar, element: str, style: Style, show: str) -> Piece:
-    """A coefficient and an element."""
-    coefficient = scalar_text(c, style, show, as_factor=bool(element))
-    negative = coefficient.startswith("-")
-    if negative:
+def _piece(coefficient: str, element: str) -> Piece:
+    """A coefficient and an element, the sign taken off."""
+    is_negative = coefficient.startswith("-")
+    if is_negative:
         coefficient = coefficient[1:]
-    if coefficient == "1" and element:
-        coefficient = ""
-    return negative, coefficient, element
+    return is_negative, "" if coefficient == "1" and element else coefficient, element
 
 
 def monomial_text(exponents: tuple[int, ...], style: Style = TEXT) -> str:

@@ -12,6 +12,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import lru_cache
 
+from flint.utils.flint_exceptions import DomainError
+
 from spanwright.kernel import budget
 from spanwright.kernel.coefficients import Scalar, total
 from spanwright.kernel.families.base import Coefficients, Family, Index, check_composition
@@ -160,13 +162,21 @@ def _with_least_part_zero(mu: Composition) -> LaurentPolynomial:
 def _raised(polynomial: LaurentPolynomial, nu: Composition) -> LaurentPolynomial:
     """E_(pi nu) = q^(nu_n) X_1 T_pi E_nu, pi nu = (nu_n + 1, nu_1, ..., nu_(n-1))."""
     ring = polynomial.ring
+    last = nu[-1]
     top = max(e[-1] for e in polynomial.terms)
+    power = [ring.context.from_dict({(0, k): 1}) for k in range(max(top - last, last) + 1)]
     terms: Terms = {}
-    powers = [ring.context.from_dict({(0, k): 1}) for k in range(top + 1)]
-    for e, c in polynomial.terms.items():
-        # q^(nu_n - e_n), kept whole by taking q^(nu_n - top) out
-        terms[(e[-1] + 1, *e[:-1])] = c * powers[top - e[-1]]
-    scale = polynomial.scale * weight_scalar((nu[-1] - top, 0))
+    low = 0
+    try:
+        for e, c in polynomial.terms.items():
+            k = last - e[-1]
+            terms[(e[-1] + 1, *e[:-1])] = c * power[k] if k > 0 else c / power[-k] if k else c
+    except DomainError:
+        # q^(nu_n - top) is taken out, so that all stays whole
+        low = last - top
+        for e, c in polynomial.terms.items():
+            terms[(e[-1] + 1, *e[:-1])] = c * ring.context.from_dict({(0, top - e[-1]): 1})
+    scale = polynomial.scale * weight_scalar((low, 0)) if low else polynomial.scale
     # powers of q apart, the coefficients are the old ones
     return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale, suspects=())
 
@@ -200,9 +210,13 @@ def _intertwined(polynomial: LaurentPolynomial, nu: Composition, i: int) -> Laur
             value = value - image * power
             if value:
                 terms[line.exponents(k)] = value
-    scale = polynomial.scale * one_minus(z).inverse() * weight_scalar((0, -shift))
-    return LaurentPolynomial.reduced(
-        polynomial.n, ring, terms, scale, suspects=quadratic(z).factors)
+    scale = polynomial.scale * one_minus(z).inverse()
+    if shift:
+        scale = scale * weight_scalar((0, -shift))
+    # the square of this step, times (1 - z)^2, is (1 - t z)(t - z): only that can cancel
+    suspects = (
+        *one_minus((q_power, t_power + 1)).factors, *one_minus((q_power, t_power - 1)).factors)
+    return LaurentPolynomial.reduced(polynomial.n, ring, terms, scale, suspects)
 
 
 # from monomials
