@@ -29,7 +29,9 @@ def crash(
     """What ended a child that nobody stopped, in the reader's words."""
     ended_by = os.WTERMSIG(status) if os.WIFSIGNALED(status) else 0
     wants_memory = "memory" in words.lower() or "alloc" in words.lower()
-    if ended_by == signal.SIGABRT and (wants_memory or not words):
+    if (ended_by == signal.SIGABRT and not words) or (
+        ended_by in (0, signal.SIGABRT) and wants_memory
+    ):
         return too_much_memory(limit, place, reached)
     if ended_by in (signal.SIGSEGV, signal.SIGBUS) and (
         wants_memory or most_memory > limit.amount // 2
@@ -43,7 +45,8 @@ def crash(
             "fix memory = …   to end such a sentence sooner")
     name = (signal.Signals(ended_by).name if ended_by
             else f"status {os.waitstatus_to_exitcode(status)}")
-    said = f": {words[:100]}" if words else ""
+    # what the interpreter says of itself is for us, not for the reader
+    said = f": {words[:100]}" if words and not words.startswith("Traceback") else ""
     return failure(
         "internal-error", place,
         f"the computation ended by itself ({name}{said}){so_far(reached)}; the session is as it "

@@ -72,10 +72,14 @@ class _Stopped(BaseException):
     """The front end asked to stop while this process was at work itself."""
 
 
-class _Restored(Exception):
-    """This keeper is the session again; `rest` is what is left of the request at hand."""
+class _NoProcess(Exception):
+    """The system has no room for one more process."""
 
-    def __init__(self, rest: dict[str, Any]) -> None:
+
+class _Restored(Exception):
+    """This keeper is the session again; `rest` is the text at hand, with what is left of it."""
+
+    def __init__(self, rest: _Text) -> None:
         super().__init__()
         self.rest = rest
 
@@ -157,16 +161,17 @@ class CheckpointedSession(Session):
 
     def serve(self) -> None:
         """Answer requests until there are no more."""
-        request: dict[str, Any] | None = None
+        text: _Text | None = None
         while True:
             try:
-                if request is not None:
-                    self.answer(request)
+                if text is not None:
+                    self._text = text
+                    self._answer_text()
                 # a tree that a keeper holds as well would be copied to be let go
                 self._text = NO_TEXT
                 if self._is_due():
                     # now, when nobody may be waiting, rather than with the next sentence
-                    with contextlib.suppress(OSError):
+                    with contextlib.suppress(_NoProcess):
                         self._checkpoint()
                         self._touch()
                 while self._dying and not select.select([REQUESTS], [], [], 0.05)[0]:
@@ -174,19 +179,18 @@ class CheckpointedSession(Session):
                 request = receive(REQUESTS)
                 if request is None:
                     return
+                text = self._text_of(request)
             except _Restored as restored:
-                request = restored.rest
+                text = restored.rest
 
-    def answer(self, request: dict[str, Any]) -> None:
+    def _answer_text(self) -> None:
         """Run a text's sentences but for the first `skip`, and send a frame for each.
 
         A `begin` frame goes before each reply, a `state` frame behind the last.
         """
+        request = self._text.request
         self.has_quit, self._is_stopped = False, request.get("is_over", False)
         self.n_sentences = request["after"]
-        started = time.monotonic()
-        self._read_text(request)
-        self._age += time.monotonic() - started
         for place in range(request["skip"], len(self._text.chunks)):
             if self._is_stopped or self.has_quit:
                 break
@@ -195,20 +199,21 @@ class CheckpointedSession(Session):
                 break
         write_all(encoded({"state": asdict(self.state()), "id": request["id"]}), self.frames)
 
-    def _read_text(self, request: dict[str, Any]) -> None:
+    def _text_of(self, request: dict[str, Any]) -> _Text:
+        """A request with its text in sentences."""
         source = Source(request["say"], request["name"])
-        self._text = _Text(request, source, ())
-        if self._is_stopped:
-            return
+        self._text, self._is_stopped = _Text(request, source, ()), False
+        started = time.monotonic()
         try:
             # long texts take their time, and nothing can be lost
             with self._interruptible():
-                self._text = _Text(request, source, parse(source).chunks)
+                chunks = parse(source).chunks
         except _Stopped:
             first = Span(0, len(source.text.partition("\n")[0]))
             wrong = Chunk(first, None, (failure("stopped", first, "stopped").diagnostic,))
-            self._is_stopped = False  # the loop ends with this chunk
-            self._text = _Text(request, source, (wrong,) * (request["skip"] + 1))
+            chunks = (wrong,) * (request["skip"] + 1)
+        self._age += time.monotonic() - started
+        return _Text(request, source, chunks)
 
     def _answer_one(self, place: int) -> str:
         """Run one sentence, send what came of it, and tell its status."""
@@ -218,11 +223,11 @@ class CheckpointedSession(Session):
             "sentence": self.n_sentences + 1, "line": line, "column": column,
             "source": source.slice(chunk.span).strip()[:MOST_SHOWN]}}), self.frames)
         started = time.monotonic()
-        if chunk.sentence is None:
-            outcome = self._run_chunk(source, chunk)
-            frame, status = self._frame(outcome), outcome.status
-        elif self._must_stop():
+        if self._must_stop():
             outcome = self._undone(source, chunk.span, failure("stopped", chunk.span, "stopped"))
+            frame, status = self._frame(outcome), outcome.status
+        elif chunk.sentence is None:
+            outcome = self._run_chunk(source, chunk)
             frame, status = self._frame(outcome), outcome.status
         else:
             frame, status = self._run_watched(source, chunk, place)
@@ -241,25 +246,26 @@ class CheckpointedSession(Session):
     def _checkpoint(self) -> None:
         """Go on as a child of this process, which is its keeper from here on.
 
-        Raises OSError when the system has no room for one more process, and _Restored, in the
-        keeper, when that is to be the session again.
+        Raises _NoProcess, and in the keeper _Restored when that is to be the session again.
         """
-        notes, their_notes = os.pipe()
-        their_answers, answers = os.pipe()
         keeper, former = os.getpid(), self._links
+        ends: list[int] = []
         try:
+            ends += os.pipe()
+            ends += os.pipe()
             child = os.fork()
-        except OSError:
-            for fd in (notes, their_notes, their_answers, answers):
+        except OSError as error:
+            for fd in ends:
                 os.close(fd)
-            raise
+            raise _NoProcess(error.strerror) from error
+        notes, their_notes, their_answers, answers = ends
         if child == 0:
             os.close(notes)
             os.close(answers)
             if former is not None:
                 former.close()
             self._links = _Links(keeper, their_notes, their_answers)
-            self._age, self._untold = 0.0, ()
+            self._age, self._untold, self._dying = 0.0, (), ()
             self._known = frozenset((self._text.request["id"],))
             self.uses.clear()
             return
@@ -283,10 +289,11 @@ class CheckpointedSession(Session):
         """Run one sentence under its limits while the keeper watches; its frame and status."""
         try:
             limit = self._begin(place)
-        except OSError as error:
+        except _NoProcess as error:
             outcome = self._undone(source, chunk.span, failure(
                 "over-budget", chunk.span,
-                f"the system has no room for one more process ({error.strerror})"))
+                f"the system has no room for one more process ({error})",
+                "ulimit -u   says how many it allows"))
             return self._frame(outcome), outcome.status
         assert self._links is not None
         if os.lseek(ERRORS, 0, os.SEEK_CUR):
@@ -326,10 +333,15 @@ class CheckpointedSession(Session):
         return frame, outcome.status
 
     def _begin(self, place: int) -> MemoryLimit:
-        """Have a keeper watch a sentence from here on; what it may take. Raises OSError."""
+        """Have a keeper watch a sentence from here on; what it may take. Raises _NoProcess."""
         while True:
             if self._is_due():
-                self._checkpoint()
+                try:
+                    self._checkpoint()
+                except _NoProcess:
+                    # an old keeper has more to do again, but is better than none
+                    if self._links is None or self.uses:
+                        raise
             assert self._links is not None
             limit = self._memory_limit()
             sentences = (*self._untold, (self._text.request, place))
@@ -358,6 +370,9 @@ class CheckpointedSession(Session):
 
     def guarded(self, sentence: syntax.Sentence, action: Callable[[], Any]) -> Any:
         """Carry `action` out with the clock left to the keeper, which needs no help to stop it."""
+        if self.means.kept is not None:
+            # cases that are finished are so for good
+            self.uses.append(str(self.means.kept))
         limits = replace(
             budget.current(), is_spent=_never, report=self._report,
             max_bytes=self.context.settings.memory or self.usual_memory)
@@ -432,9 +447,10 @@ class CheckpointedSession(Session):
             span = text.chunks[place].span
             outcome = self._undone(text.source, span, found(span), note["elapsed"])
             write_all(self._frame(outcome), self.frames)
-        raise _Restored({
+        rest = {
             **text.request, "skip": place + 1, "after": self.n_sentences,
-            "is_over": self._is_stopped or text.request["stops_at_first"]})
+            "is_over": self._is_stopped or text.request["stops_at_first"]}
+        raise _Restored(replace(text, request=rest))
 
     def _watch(
         self, child: int, note: dict[str, Any], notes: int, answers: int
@@ -458,8 +474,10 @@ class CheckpointedSession(Session):
                     if self._must_stop():
                         return self._killed(child, "stopped", "stopped", reached)
                     # from here on the sentence stands
-                    write_all(b"G", answers)
-                    return None
+                    with contextlib.suppress(BrokenPipeError):
+                        write_all(b"G", answers)
+                        return None
+                    break
                 told = _told(notes) if mark else None
                 if told is None:
                     # cut in the middle: the session is no more
@@ -495,8 +513,13 @@ class CheckpointedSession(Session):
 
     def _bury(self) -> bool:
         """Whether killed children are still about."""
-        self._dying = tuple(pid for pid in self._dying if os.waitpid(pid, os.WNOHANG)[0] == 0)
-        return bool(self._dying)
+        left = []
+        for process in self._dying:
+            with contextlib.suppress(ChildProcessError):
+                if os.waitpid(process, os.WNOHANG)[0] == 0:
+                    left.append(process)
+        self._dying = tuple(left)
+        return bool(left)
 
     # outcomes and limits
 

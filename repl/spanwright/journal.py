@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import contextlib
 import os
-import signal
 import time
 from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
@@ -16,7 +15,15 @@ from typing import Any, TypeVar
 
 from spanwright.files import MAX_BYTES
 from spanwright.headers import writer
-from spanwright.log_files import CLOEXEC, LogFailure, all_of, default_folder, lock, reason
+from spanwright.log_files import (
+    CLOEXEC,
+    LogFailure,
+    all_of,
+    default_folder,
+    lock,
+    reason,
+    undisturbed,
+)
 from spanwright.log_format import Composer, Log, read_log
 from spanwright.log_marks import FORMAT, SUFFIX
 from spanwright.replies import Reply
@@ -123,7 +130,7 @@ class Journal:
         if self.n_records == 0 and not keeps_empty:
             self._discard()
             return
-        with _undisturbed():
+        with undisturbed():
             self._append(self._composer.closing())
             os.close(self._handle)
             self._handle = -1
@@ -155,7 +162,7 @@ class Journal:
         for k, item in enumerate(items):
             reply: Any = item if reply_of is None else reply_of(item)
             chunk = parsed.chunks[k] if k < len(parsed.chunks) else None
-            with _undisturbed():
+            with undisturbed():
                 if chunk is None:
                     # an answer to no sentence of this text: kept as it is, never run again
                     content = self._composer.record(reply.source, reply, None)
@@ -169,7 +176,7 @@ class Journal:
         rest = [
             source.slice(c.span) for c in parsed.comments[place:] if not c.is_result]
         if rest:
-            with _undisturbed():
+            with undisturbed():
                 self._append(self._composer.prose(rest))
 
     def _append(self, content: str) -> None:
@@ -307,20 +314,6 @@ def _since_last_seal(text: str) -> str:
 
 
 # --- The system ----------------------------------------------------------------------------------
-
-
-@contextlib.contextmanager
-def _undisturbed() -> Iterator[None]:
-    """Hold an interrupt back while a record is made and written: half of one spoils a log."""
-    mask = getattr(signal, "pthread_sigmask", None)
-    if mask is None:
-        yield
-        return
-    before = mask(signal.SIG_BLOCK, {signal.SIGINT, signal.SIGTERM})
-    try:
-        yield
-    finally:
-        mask(signal.SIG_SETMASK, before)
 
 
 def _write_all(handle: int, data: bytes) -> None:

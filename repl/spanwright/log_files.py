@@ -5,8 +5,11 @@ Loads no grammar: the shell asks before its first prompt.
 
 from __future__ import annotations
 
+import contextlib
 import os
+import signal
 import time
+from collections.abc import Iterator
 from pathlib import Path
 
 import platformdirs
@@ -96,3 +99,17 @@ def lock(handle: int, path: Path) -> None:
 def reason(error: OSError) -> str:
     """What the system says, in lower case."""
     return (error.strerror or str(error)).lower()
+
+
+@contextlib.contextmanager
+def undisturbed() -> Iterator[None]:
+    """Hold an interrupt back while a log is made or written: half a record spoils it."""
+    mask = getattr(signal, "pthread_sigmask", None)
+    if mask is None:
+        yield
+        return
+    before = mask(signal.SIG_BLOCK, {signal.SIGINT, signal.SIGTERM})
+    try:
+        yield
+    finally:
+        mask(signal.SIG_SETMASK, before)

@@ -35,7 +35,9 @@ class Ending(Enum):
 def ending(content: bytes) -> Ending:
     """How a log ends, by its first line and its last whole seal."""
     first = content[:200].removeprefix(b"\xef\xbb\xbf").partition(b"\n")[0]
-    if FIRST.match(first.decode("utf-8", "replace").rstrip("\r")) is None:
+    found = FIRST.match(first.decode("utf-8", "replace").rstrip("\r"))
+    if found is None or int(found.group(1)) > FORMAT:
+        # what a newer program wrote is for that to offer
         return Ending.NO_LOG
     facts = _last_seal(content[-_TAIL:]) or _last_seal(content)
     if facts == CLOSED:

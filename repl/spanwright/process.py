@@ -104,15 +104,24 @@ class ProcessConversation:
         self._abandon()
         if self._is_closed:
             raise ValueError("this conversation is closed")
-        self._request = {
+        self._is_sent, self._stop_asked, self._losses = False, None, 0
+        # from here on there is something to stop
+        self._request = request = {
             "say": text, "name": name, "skip": 0, "is_recorded": is_recorded,
             "stops_at_first": stops_at_first}
-        self._is_sent, self._stop_asked, self._losses = False, None, 0
+        return self._replies(request, on_progress)
+
+    def _replies(
+        self, request: dict[str, Any], on_progress: Callable[[Progress], None] | None
+    ) -> Iterator[Reply]:
         try:
-            while (reply := self._advance(on_progress)) is not None:
+            while self._request is request and (
+                reply := self._advance(on_progress)
+            ) is not None:
                 yield reply
         finally:
-            self._abandon()
+            if self._request is request:
+                self._abandon()
 
     def state(self) -> State:
         """What the session holds now."""
@@ -151,7 +160,7 @@ class ProcessConversation:
             while self._request is not None:
                 try:
                     if not self._is_sent:
-                        self._repeat()
+                        self._repeat(on_progress)
                         self._send(self._request)
                         self._is_sent = True
                     reply = self._reply(on_progress)
@@ -164,8 +173,8 @@ class ProcessConversation:
                     request, self._request = self._request, None
                     return _reply_about(
                         self._beginning(request), "stopped",
-                        "stopped while the session was being restored, which the next sentence "
-                        "goes on with")
+                        "stopped; the session is not restored yet, and the next sentence goes on "
+                        "with that")
                 if reply is None:
                     self._request = None
                 return reply
@@ -256,21 +265,26 @@ class ProcessConversation:
                 "`python -m spanwright.evaluating` may say why")
         return _reply_about(
             begun, "internal-error",
-            "the evaluator was lost while this ran; the session from before is restored")
+            "the evaluator was lost while this ran; the session from before will be restored")
 
     def _beginning(self, request: dict[str, Any]) -> dict[str, Any]:
         """As the evaluator would begin with a text, roughly."""
         return {"sentence": self._n_sentences + 1, "line": 1, "column": 1,
                 "source": str(request["say"]).partition("\n")[0]}
 
-    def _repeat(self) -> None:
+    def _repeat(self, on_progress: Callable[[Progress], None] | None) -> None:
         """Tell a new evaluator what it does not know yet."""
+        started = told = time.monotonic()
         while self._n_repeated < len(self._said):
             text, name = self._said[self._n_repeated]
             self._send({"say": text, "name": name, "skip": 0, "is_recorded": False,
                         "stops_at_first": True})
             is_done = True
             while (frame := self._next()) is None or "state" not in frame:
+                now = time.monotonic()
+                if on_progress and now - started >= SHOW_AFTER and now - told >= TICK:
+                    told = now
+                    on_progress(Progress(now - started, "", f"restoring the session: {text}"))
                 if frame is not None and "reply" in frame:
                     is_done = frame["reply"]["status"] != "error"
             self._n_repeated += is_done or self._stop_asked is None

@@ -210,8 +210,10 @@ class Session:
         started = time.perf_counter()
         if chunk.sentence is None:
             return self._outcome(source, chunk.span, "error", None, None, chunk.diagnostics, 0.0)
+        before = self.context, self.last_tag, self.has_quit
         try:
             step = self._carry_out(chunk.sentence, source)
+            tag = self._keep(step)
         except Failure as found:
             seconds = time.perf_counter() - started
             return self._outcome(
@@ -226,9 +228,9 @@ class Session:
                 "the program failed here, and the fault is not yours; please report "
                 f"{type(error).__name__}: {str(error)[:200]}").diagnostic
         if wrong is not None:
+            self.context, self.last_tag, self.has_quit = before
             seconds = time.perf_counter() - started
             return self._outcome(source, chunk.span, "error", None, None, (wrong,), seconds)
-        tag = self._keep(step)
         seconds = time.perf_counter() - started
         status = "failed" if step.has_failed else "ok"
         return replace(

@@ -20,7 +20,7 @@ from spanwright import journal, log_files
 from spanwright.journal import Journal
 from spanwright.log_files import LogFailure
 from spanwright.log_format import SHOWN_CHARACTERS, read_log
-from spanwright.log_marks import Ending, ending
+from spanwright.log_marks import FORMAT, Ending, ending
 from spanwright.replay import resume
 from spanwright.session import Session
 from spanwright_grammar.source import Source
@@ -358,6 +358,8 @@ def test_the_ending_seen_by_lines_alone_is_that_of_the_whole_log(tmp_path: Path)
         seen.add(found)
     assert seen == set(Ending)
     assert ending(text.replace("\n", "\r\n").encode()) is Ending.LEFT
+    newer = text.replace(f"format {FORMAT}", f"format {FORMAT + 1}", 1)
+    assert ending(newer.encode()) is Ending.NO_LOG
     long = text.replace("x_1 + x_2\n", f"x_1 + x_2   # {'long ' * 40_000}\n")
     assert ending(long[: long.rindex("long")].encode()) is Ending.LEFT
 

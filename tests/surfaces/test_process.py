@@ -90,9 +90,11 @@ def is_settled(leader: int) -> bool:
 
 
 @contextlib.contextmanager
-def talking(folder: Path | None = None, *sentences: str) -> Iterator[ProcessConversation]:
+def talking(
+    folder: Path | None = None, *sentences: str, means: dict[str, object] | None = None
+) -> Iterator[ProcessConversation]:
     """A conversation that has heard some sentences; nothing may be left of it."""
-    conversation = ProcessConversation(folder)
+    conversation = ProcessConversation(folder, means=means)
     try:
         for sentence in sentences:
             assert said(conversation, sentence).status == "ok", sentence
@@ -392,6 +394,77 @@ def test_a_file_is_not_written_again_when_the_next_sentence_is_stopped(tmp_path:
         assert when_running(conversation, conversation.stop).record["code"] == "stopped"
         assert (tmp_path / "kept.txt").read_text() == "mine\n"
         assert holds_what_it_held(conversation)
+
+
+def test_finished_cases_are_not_finished_again(tmp_path: Path) -> None:
+    kept = tmp_path / "cases.jsonl"
+    with talking(tmp_path, "let u be a parameter", "let v be a parameter",
+                 means={"kept": str(kept)}) as conversation:
+        assert said(conversation, "for k in 1..9: claim k < 5").status == "failed"
+    assert kept.read_bytes().count(b"\n") == 9
+    with talking(tmp_path, "let u be a parameter", "let v be a parameter",
+                 means={"kept": str(kept), "only_failed": True}) as conversation:
+        # the failed ones are tried anew, and no more than once
+        said(conversation, "for k in 1..9: claim k < 5")
+        n_lines = kept.read_bytes().count(b"\n")
+        assert n_lines > 9
+        assert when_running(conversation, conversation.stop).record["code"] == "stopped"
+        assert kept.read_bytes().count(b"\n") == n_lines
+
+
+def test_a_stop_behind_a_long_text_brings_no_reply_too_many(calm: ProcessConversation) -> None:
+    text = "let early = 1\n" * 4_000 + ENDLESS
+    timer = threading.Timer(3.0, calm.stop)
+    timer.start()
+    replies = list(calm.say(text))
+    timer.join()
+    assert replies[-1].record["code"] == "stopped" and len(replies) <= 4_001
+    assert holds_what_it_held(calm)
+
+
+def test_wrong_sentences_can_be_stopped_too(calm: ProcessConversation) -> None:
+    timer = threading.Timer(1.0, calm.stop)
+    timer.start()
+    replies = list(calm.say("x_1 )\n" * 20_000))
+    timer.join()
+    assert replies[-1].record["code"] == "stopped" and len(replies) < 20_000
+
+
+def test_a_stop_before_the_first_reply_is_asked_for(calm: ProcessConversation) -> None:
+    replies = calm.say(ENDLESS)
+    calm.stop()
+    assert [r.record["code"] for r in replies] == ["stopped"]
+    # an answer that is let go of late does not stop the next one
+    old = calm.say("1; 2")
+    assert next(old).text == "1"
+    new = calm.say("3; 4")
+    assert next(new).text == "3"
+    old.close()
+    assert next(new).text == "4"
+
+
+def test_no_room_for_a_keeper(monkeypatch: pytest.MonkeyPatch) -> None:
+    session = CheckpointedSession()
+
+    def no_fork() -> int:
+        raise OSError(11, "Resource temporarily unavailable")
+
+    n_files = len(os.listdir("/proc/self/fd"))
+    monkeypatch.setattr(os, "fork", no_fork)
+    frames, session.frames = os.pipe()
+    control, _ = os.pipe()
+    os.set_blocking(control, False)
+    session.control = control
+    request = {"id": 1, "say": "1 + 1", "name": "", "skip": 0, "after": 0,
+               "is_recorded": False, "stops_at_first": False}
+    session._text = session._text_of(request)
+    session._answer_text()
+    assert receive(frames) is not None
+    reply = receive(frames)
+    assert reply is not None and "no room for one more process" in reply["reply"]["messages"][0]
+    assert len(os.listdir("/proc/self/fd")) == n_files + 4
+    for fd in (frames, session.frames, control, _):
+        os.close(fd)
 
 
 def test_a_session_whose_keeper_was_killed_gets_another() -> None:

@@ -100,13 +100,15 @@ class SessionLog:
     def journal(self) -> Journal | None:
         """What takes the records; None, the reason told once, when no log can be written."""
         if not self._is_open:
-            from spanwright import journal, log_commands
+            # an interrupt waits: a session that lost its log unnoticed would be worse
+            with log_files.undisturbed():
+                from spanwright import journal, log_commands
 
-            self._is_open = True
-            try:
-                self._journal = journal.create_default(log_commands.default_settings())
-            except log_files.LogFailure as error:
-                self._tell(f"no log is kept: {error}")
+                try:
+                    self._journal = journal.create_default(log_commands.default_settings())
+                except log_files.LogFailure as error:
+                    self._tell(f"no log is kept: {error}")
+                self._is_open = True
         return self._journal
 
     def close(self) -> None:
@@ -130,6 +132,7 @@ def converse(
     # does not wait: the evaluator may still be loading
     state = conversation.state()
     while True:
+        text = ""
         try:
             text = ask(state)
             if not text.strip():
@@ -141,8 +144,10 @@ def converse(
         except EOFError:
             return 0
         except KeyboardInterrupt:
-            # Between a reply and the next prompt there is nothing to stop.
-            continue
+            # between a reply and the next prompt there is nothing to stop, before the first
+            # reply an entry that has not begun
+            if text.strip():
+                write([STOPPED])
 
 
 def show_replies(

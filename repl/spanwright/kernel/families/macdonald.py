@@ -262,7 +262,7 @@ def by_symmetrisation(partition: Partition, n: int) -> LaurentPolynomial:
     is worked out.
     """
     lam = padded(partition, n)
-    if n == 0 or lam[0] == lam[-1]:
+    if lam[0] == lam[-1]:
         return nonsymmetric.to_monomials(lam)
     if lam[-1]:
         low = lam[-1]
