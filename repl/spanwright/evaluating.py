@@ -168,7 +168,7 @@ class CheckpointedSession(Session):
                     self._text = text
                     self._answer_text()
                 # a tree that a keeper holds as well would be copied to be let go
-                self._text = NO_TEXT
+                text, self._text = None, NO_TEXT
                 if self._is_due():
                     # now, when nobody may be waiting, rather than with the next sentence
                     with contextlib.suppress(_NoProcess):
