@@ -349,3 +349,10 @@ def test_a_homogeneous_product_is_not_refused_for_its_box() -> None:
         assert len(f * f * f) == 62 * 61 // 2
         assert told[-1] == "a product of about 1,891 terms"
         assert len((x[0] + x[1] + x[2] + UNIT) ** 26) == 29 * 28 * 27 // 6
+
+
+def test_what_is_reached_reads_well() -> None:
+    told: list[str] = []
+    for what in ("this expansion", "this product"):
+        budget.Budget(report=told.append).check_terms(1_500, what)
+    assert told == ["an expansion of about 1,500 terms", "a product of about 1,500 terms"]

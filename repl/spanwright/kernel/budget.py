@@ -40,7 +40,9 @@ class Budget:
                 code="too-many-terms",
             )
         if self.report is not None:
-            self.report(f"{what.replace('this ', 'a ', 1)} of about {n_terms:,} terms")
+            kind = what.removeprefix("this ")
+            article = "an" if kind[0] in "aeiou" else "a"
+            self.report(f"{article} {kind} of about {n_terms:,} terms")
         self.check()
 
     def check_size(self, n_terms: int, bits: int, what: str) -> None:
