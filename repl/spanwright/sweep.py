@@ -42,6 +42,7 @@ from spanwright.transport import packed_context, packed_value, unpacked_value
 from spanwright.values import ListValue, Table, Text
 from spanwright_grammar import syntax
 from spanwright_grammar.diagnostics import Diagnostic
+from spanwright_grammar.parsing import ParseFailure
 from spanwright_grammar.printing import print_tree
 from spanwright_grammar.source import Span
 from spanwright_grammar.spelling import nearest
@@ -361,7 +362,14 @@ def _cell(
     result: Result, case: Case, node: syntax.Node, notes: list[str], read: Callable[[Any], Any]
 ) -> Any:
     if result["status"] != UNDECIDED:
-        return read(result["cell"])
+        try:
+            return read(result["cell"])
+        except ParseFailure as error:
+            # a case's value comes back as text, wherever it was found
+            raise failure(
+                "too-large", node.place,
+                f"the value for {case.text()} is too long for a table that is shown",
+                "tabulate … to \"table.csv\"") from error
     if result.get("code") in STATIC:
         _refuse_undecided(case, result, node)
     if len(notes) < LARGEST_N_REASONS:

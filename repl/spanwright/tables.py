@@ -49,7 +49,7 @@ class Writer(Protocol):
 @contextmanager
 def writer(place: Path, suffix: str, columns: tuple[str, ...]) -> Iterator[Writer]:
     """A writer for a file; the file is in its place when the block ends well, else untouched."""
-    draft = place.with_name(f"{place.name}.part")
+    draft = place.with_name(f".{place.name[:80]}.part")
     draft.unlink(missing_ok=True)
     made = _WRITERS[suffix](draft, columns)
     try:

@@ -483,3 +483,12 @@ def test_a_setting_stops_at_the_first_counterexample() -> None:
     assert tally_of(sentence).n_failed == 7
     tally = tally_of(f"fix counterexamples = first; {sentence}")
     assert (tally.n_held, tally.n_failed) == (2, 1) and not tally.is_whole
+
+
+def test_a_cell_too_long_to_be_read_back_is_spoken_of(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("spanwright_grammar.parsing.MAX_SENTENCE_LENGTH", 400)
+    outcome = outcome_of("tabulate (x_1 + x_2 + x_3)^(4 k) for k in 1..2", jobs=0)
+    (found,) = outcome.diagnostics
+    assert (found.code, found.message) == (
+        "too-large", "the value for k = 2 is too long for a table that is shown")
+    assert found.hints == ('tabulate … to "table.csv"',)
